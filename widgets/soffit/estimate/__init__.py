@@ -1,0 +1,1 @@
+"""Estimators: arrays in, frozen results out; decimal per period throughout."""

@@ -1,0 +1,1 @@
+"""Hold the alpha and nothing else: weights, walk-forward, costs, ticket, book."""

@@ -1,0 +1,1 @@
+"""One builder a result: what a panel displays and what a memo keeps."""
