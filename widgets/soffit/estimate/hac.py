@@ -6,8 +6,8 @@ has already made its mean zero.
 
 from __future__ import annotations
 
+import math
 from enum import StrEnum
-from math import floor, pow
 
 import numpy as np
 import numpy.typing as npt
@@ -56,7 +56,7 @@ def rule_of_thumb_lags(T: int) -> int:
     Newey and West (1994), Review of Economic Studies 61: the length they use for Bartlett pilot
     autocovariances; common practice as a lag count.
     """
-    return min(floor(4.0 * pow(_periods(T) / 100.0, 2.0 / 9.0)), T - 1)
+    return min(math.floor(4.0 * math.pow(_periods(T) / 100.0, 2.0 / 9.0)), T - 1)
 
 
 def stock_watson_lags(T: int) -> int:
@@ -73,7 +73,7 @@ def stock_watson_lags(T: int) -> int:
         At most ``T - 1``.
     """
     # The tiny lift keeps exact cubes (T = 64, 512) from falling below their whole number in floating point.
-    return min(floor(0.75 * pow(_periods(T), 1.0 / 3.0) + 1e-12), T - 1)
+    return min(math.floor(0.75 * math.pow(_periods(T), 1.0 / 3.0) + 1e-12), T - 1)
 
 
 def newey_west_bandwidth(moments: Floats) -> float:
@@ -138,7 +138,7 @@ def newey_west_lags(rule: LagRule, T: int, *, fixed: int = 0, moments: Floats | 
                 f"The automatic Newey-West lag got {len(moments)} rows of moments for {T} periods",
                 allowed="one row of moments a period",
             )
-        return min(floor(newey_west_bandwidth(moments)), T - 1)
+        return min(math.floor(newey_west_bandwidth(moments)), T - 1)
     if rule is LagRule.RULE_OF_THUMB:
         return rule_of_thumb_lags(T)
     return _fitting(fixed, T)
