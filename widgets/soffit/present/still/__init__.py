@@ -1,0 +1,1 @@
+"""Parts of the matplotlib drawing; :mod:`soffit.present.draw_mpl` is the way in."""
