@@ -1,0 +1,271 @@
+"""Cells to numbers: missing codes, decimal commas, thousands marks; and errors that name the cell."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from soffit.errors import InputError
+
+__all__ = ["MISSING_CODES", "MISSING_TEXTS", "Column", "Marks", "Missing", "detect_marks", "read_numbers"]
+
+MISSING_CODES = (-99.99, -999.0, -999.99, -9999.0)
+"""Numbers that providers write where there is no value."""
+
+MISSING_TEXTS = frozenset(
+    [
+        "",
+        "na",
+        "n/a",
+        "n.a.",
+        "nan",
+        "null",
+        "none",
+        "-",
+        "--",
+        ".",
+        "..",
+        "#n/a",
+        "#n/a n/a",
+        "<na>",
+        "nat",
+        "missing",
+    ]
+)
+"""Texts, in lower case, that stand where there is no value."""
+
+_PLAIN = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:e[+-]?\d+)?", re.IGNORECASE | re.ASCII)
+_SPACES = str.maketrans(
+    {"\u00a0": "", "\u202f": "", "\u2009": "", " ": "", "'": "", "\u2019": "", "\u2212": "-"}
+)
+_GROUPED = {
+    ",": re.compile(r"[+-]?\d{1,3}(?:,\d{3})+(?:\.\d*)?", re.ASCII),
+    ".": re.compile(r"[+-]?\d{1,3}(?:\.\d{3})+(?:,\d*)?", re.ASCII),
+}
+
+
+@dataclass(frozen=True)
+class Marks:
+    """Decimal and thousands mark of a source."""
+
+    decimal: str = "."
+    thousands: str = ""
+
+
+@dataclass(frozen=True)
+class Missing:
+    """What stands for 'no value'.
+
+    Parameters
+    ----------
+    codes : tuple of float
+        Numbers.
+    texts : frozenset of str
+        Texts in lower case.
+    """
+
+    codes: tuple[float, ...] = MISSING_CODES
+    texts: frozenset[str] = MISSING_TEXTS
+
+    @classmethod
+    def of(cls, declared: Iterable[float | str] | None) -> Missing:
+        """The codes an analyst declared, in place of the usual numbers and beside the usual texts."""
+        if declared is None:
+            return cls()
+        items = list(declared)
+        texts = {item.strip().casefold() for item in items if isinstance(item, str)}
+        return cls(tuple(float(item) for item in items if not isinstance(item, str)), MISSING_TEXTS | texts)
+
+
+@dataclass
+class Column:
+    """A column of numbers, with what was done to read it.
+
+    Parameters
+    ----------
+    values : ndarray of float64
+        NaN where there is no value.
+    missing : dict of str to int
+        How many cells held each missing code.
+    repairs : dict of str to int
+        How many cells were mended, by what was done.
+    percent_signs : int
+        How many cells carried a per-cent sign.
+    """
+
+    values: NDArray[np.float64]
+    missing: dict[str, int] = field(default_factory=dict)
+    repairs: dict[str, int] = field(default_factory=dict)
+    percent_signs: int = 0
+
+
+def read_numbers(
+    cells: Any, name: str, place: Callable[[int], str], marks: Marks, missing: Missing
+) -> Column:
+    """Read one column.
+
+    Parameters
+    ----------
+    cells : array-like
+        Numbers or text.
+    name : str
+        Name of the column, for errors.
+    place : callable
+        Says where the analyst finds a row.
+    marks : Marks
+        Decimal and thousands mark.
+    missing : Missing
+        What stands for no value.
+
+    Raises
+    ------
+    InputError
+        If a cell is neither a number nor a known missing code, or is infinite.
+    """
+    series = pd.Series(cells)
+    if pd.api.types.is_bool_dtype(series.dtype):
+        raise InputError(
+            f"Column '{name}' holds True and False, not numbers",
+            remedy=f"give it the role 'ignored': roles={{'{name}': 'ignored'}}",
+        )
+    if pd.api.types.is_complex_dtype(series.dtype) or pd.api.types.is_datetime64_any_dtype(series.dtype):
+        raise InputError(
+            f"Column '{name}' holds {series.dtype}, not numbers",
+            remedy=f"give it the role 'ignored': roles={{'{name}': 'ignored'}}",
+        )
+    if pd.api.types.is_numeric_dtype(series.dtype):
+        column = Column(series.to_numpy(dtype=float, na_value=np.nan, copy=True))
+        blank = int(np.isnan(column.values).sum())
+        if blank:
+            column.missing["blank"] = blank
+    else:
+        column = _read_text(series.to_numpy(dtype=object), name, place, marks, missing)
+    infinite = np.flatnonzero(np.isinf(column.values))
+    if len(infinite):
+        raise InputError(
+            f"Column '{name}' is infinite in {place(int(infinite[0]))}",
+            remedy="correct the value, or leave the cell empty",
+        )
+    for code in missing.codes:
+        hits = column.values == code
+        if hits.any():
+            column.missing[f"{code:g}"] = column.missing.get(f"{code:g}", 0) + int(hits.sum())
+            column.values[hits] = np.nan
+    return column
+
+
+def _read_text(
+    cells: NDArray[np.object_], name: str, place: Callable[[int], str], marks: Marks, missing: Missing
+) -> Column:
+    column = Column(np.full(len(cells), np.nan))
+    for row, cell in enumerate(cells):
+        if isinstance(cell, (bool, np.bool_)):
+            raise _not_a_number(cell, name, place(row))
+        if isinstance(cell, (int, float, np.integer, np.floating)):
+            column.values[row] = float(cell)
+            if np.isnan(column.values[row]):
+                _count(column.missing, "blank")
+            continue
+        text = "" if cell is None or cell is pd.NA or cell is pd.NaT else str(cell).strip()
+        if _PLAIN.fullmatch(text) and marks.decimal == ".":
+            column.values[row] = float(text)
+        elif text.casefold() in missing.texts:
+            _count(column.missing, f"'{text}'" if text else "blank")
+        else:
+            column.values[row] = _mended(text, column, name, place(row), marks)
+    if column.percent_signs and column.percent_signs != int((~np.isnan(column.values)).sum()):
+        raise InputError(
+            f"Column '{name}' has a per-cent sign on {column.percent_signs} of its values and none on the rest",
+            remedy="write all of them one way",
+        )
+    return column
+
+
+def _count(counts: dict[str, int], key: str) -> None:
+    counts[key] = counts.get(key, 0) + 1
+
+
+def _mended(text: str, column: Column, name: str, where: str, marks: Marks) -> float:
+    """A number that is not written plainly."""
+    bare = text.translate(_SPACES)
+    negative = bare.startswith("(") and bare.endswith(")")
+    if negative:
+        bare = "-" + bare[1:-1]
+    signed = bare.endswith("%")
+    bare = bare.removesuffix("%")
+    if marks.thousands and _GROUPED[marks.thousands].fullmatch(bare):
+        bare = bare.replace(marks.thousands, "")
+        _count(column.repairs, f"thousands mark '{marks.thousands}' taken out")
+    if marks.decimal == ",":
+        if "." in bare:
+            raise _not_a_number(text, name, where)
+        if "," in bare:
+            bare = bare.replace(",", ".")
+            _count(column.repairs, "decimal comma read")
+    if not _PLAIN.fullmatch(bare):
+        raise _not_a_number(text, name, where)
+    if negative:
+        _count(column.repairs, "brackets read as a minus")
+    column.percent_signs += signed
+    return float(bare)
+
+
+def _not_a_number(cell: Any, name: str, where: str) -> InputError:
+    shown = str(cell) if len(str(cell)) <= 40 else str(cell)[:40] + "..."
+    return InputError(
+        f"Column '{name}' has {shown!r} in {where}",
+        allowed="a number, an empty cell or a known missing code",
+        remedy=f"correct the cell, declare the code with missing=({shown!r},), or ignore the column with "
+        f"roles={{'{name}': 'ignored'}}",
+    )
+
+
+def detect_marks(columns: Iterable[Sequence[Any]]) -> Marks:
+    """Tell the decimal mark of a source from its text cells.
+
+    Raises
+    ------
+    InputError
+        If commas can be read both as decimal and as thousands marks, or are used as both.
+    """
+    decimal_comma = thousands_comma = unclear = thousands_dot = ""
+    plain_dot = False
+    for cells in columns:
+        for cell in cells:
+            if not isinstance(cell, str) or ("," not in cell and "." not in cell):
+                continue
+            text = cell.strip().translate(_SPACES).strip("()%+-")
+            if "," not in text:
+                plain_dot = plain_dot or (
+                    text.count(".") == 1 and not re.fullmatch(r"[1-9]\d{0,2}\.\d{3}", text)
+                )
+                thousands_dot = thousands_dot or (text if text.count(".") > 1 else "")
+            elif "." in text:
+                thousands_comma = thousands_comma or (text if _GROUPED[","].fullmatch(text) else "")
+                decimal_comma = decimal_comma or (text if _GROUPED["."].fullmatch(text) else "")
+            elif text.count(",") > 1:
+                thousands_comma = thousands_comma or text
+            elif re.fullmatch(r"[1-9]\d{0,2},\d{3}", text):
+                unclear = unclear or text
+            elif re.fullmatch(r"\d*,\d*", text):
+                decimal_comma = decimal_comma or text
+    if decimal_comma and (thousands_comma or plain_dot):
+        other = thousands_comma or "a decimal point"
+        raise InputError(
+            f"Numbers are written both with a decimal comma ('{decimal_comma}') and with {other!r}",
+            remedy="write all of them one way, or say which with decimal=',' or decimal='.'",
+        )
+    if decimal_comma:
+        return Marks(",", ".")
+    if unclear and not (thousands_comma or plain_dot):
+        raise InputError(
+            f"'{unclear}' can be a thousand or a decimal number",
+            remedy="say which with decimal=',' or decimal='.'",
+        )
+    return Marks(".", "," if unclear or thousands_comma else "")

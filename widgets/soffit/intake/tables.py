@@ -1,0 +1,206 @@
+"""One source on its way to the panel: dates read and sorted, cells made numbers, rows counted."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from soffit.errors import InputError
+from soffit.intake.dates import read_dates
+from soffit.intake.numbers import Column, Marks, Missing, detect_marks, read_numbers
+from soffit.intake.options import Frequency, Role
+from soffit.intake.periods import month_text
+from soffit.intake.readers import RawTable
+from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
+
+__all__ = ["Table", "clean_table", "merge_duplicates"]
+
+Floats = NDArray[np.float64]
+
+
+@dataclass(eq=False)
+class Table:
+    """A source with sorted dates and numeric columns.
+
+    Parameters
+    ----------
+    source : str
+        What the record calls the source.
+    names : list of str
+        C column names.
+    values : ndarray
+        T×C, NaN where there is no value.
+    stamps : ndarray of datetime64[ns]
+        T dates, sorted.
+    rows : ndarray of int
+        T numbers by which the analyst finds each row.
+    row_word : str
+        'line' or 'row'.
+    told : Frequency or None
+        What the form of the dates says.
+    signs : set of str
+        Columns whose cells carried per-cent signs.
+    units : dict of str to str
+        What was found or declared, by column.
+    frequency : Frequency or None
+        Set once it is known.
+    """
+
+    source: str
+    names: list[str]
+    values: Floats
+    stamps: NDArray[np.datetime64]
+    rows: NDArray[np.int64]
+    row_word: str
+    told: Frequency | None = None
+    signs: set[str] = field(default_factory=set)
+    units: dict[str, str] = field(default_factory=dict)
+    frequency: Frequency | None = None
+
+    def place(self, row: int) -> str:
+        """Where the analyst finds a row, with its date."""
+        day = month_text(self.stamps[row], self.frequency or Frequency.DAILY)
+        return f"{self.row_word} {self.rows[row]} ({day}) of {self.source}"
+
+    def take(self, rows: NDArray[np.int64] | NDArray[np.bool_]) -> None:
+        """Keep some rows, in the order given."""
+        self.values = self.values[rows]
+        self.stamps = self.stamps[rows]
+        self.rows = self.rows[rows]
+
+
+def clean_table(raw: RawTable, roles: Mapping[str, Role], missing: Missing, record: RecordBuilder) -> Table:
+    """Dates and numbers of a raw table, sorted, with exact duplicates merged.
+
+    Raises
+    ------
+    InputError
+        If a date or a number cannot be read, or two rows of one date differ.
+    """
+    dates = read_dates(raw.dates, raw.place, raw.date_format)
+    for kind, message, severity in dates.notes:
+        record.add(kind, message, severity, rows=len(raw.rows), source=raw.source)
+    names = [str(name) for name in raw.frame.columns if roles.get(str(name)) is not Role.IGNORED]
+    columns = _numbers(raw, names, missing)
+    _report_cells(columns, raw, record)
+    values = np.empty((len(raw.rows), len(names)), order="F")
+    for position, name in enumerate(names):
+        values[:, position] = columns[name].values
+    table = Table(
+        raw.source,
+        names,
+        values,
+        dates.stamps,
+        raw.rows,
+        raw.row_word,
+        dates.told,
+        {name for name in names if columns[name].percent_signs},
+    )
+    _sort(table, record)
+    merge_duplicates(table, record, "date")
+    return table
+
+
+def _numbers(raw: RawTable, names: list[str], missing: Missing) -> dict[str, Column]:
+    texts = [list(raw.frame[name]) for name in names if raw.frame[name].dtype.kind not in "fiu"]
+    marks = raw.marks if raw.marks is not None else detect_marks(texts) if texts else Marks()
+    return {name: read_numbers(raw.frame[name], name, raw.place, marks, missing) for name in names}
+
+
+def _report_cells(columns: Mapping[str, Column], raw: RawTable, record: RecordBuilder) -> None:
+    """One entry for each missing code and each kind of repair."""
+    by_code: dict[str, dict[str, int]] = {}
+    by_repair: dict[str, dict[str, int]] = {}
+    for name, column in columns.items():
+        for code, count in column.missing.items():
+            by_code.setdefault(code, {})[name] = count
+        for repair, count in column.repairs.items():
+            by_repair.setdefault(repair, {})[name] = count
+    for code, counts in by_code.items():
+        what = "Blank cells" if code == "blank" else f"Cells with {code}"
+        record.add(
+            EntryKind.MISSING,
+            f"{what} count as no value: {_counted(counts)}.",
+            Severity.NOTE if code == "blank" else Severity.REPAIRED,
+            series=list(counts),
+            rows=sum(counts.values()),
+            source=raw.source,
+        )
+    for repair, counts in by_repair.items():
+        record.add(
+            EntryKind.NUMBERS,
+            f"{repair.capitalize()}: {_counted(counts)}.",
+            Severity.REPAIRED,
+            series=list(counts),
+            rows=sum(counts.values()),
+            source=raw.source,
+        )
+
+
+def _counted(counts: Mapping[str, int]) -> str:
+    return listed([f"'{name}' ({count:,})" for name, count in counts.items()], quote="")
+
+
+def _sort(table: Table, record: RecordBuilder) -> None:
+    steps = np.diff(table.stamps.astype(np.int64))
+    if not (steps < 0).any():
+        return
+    if (steps <= 0).all():
+        message = "Rows ran from the latest date to the earliest; they were sorted."
+    else:
+        row = int(np.flatnonzero(steps < 0)[0]) + 1
+        message = f"Dates were out of order, first in {table.place(row)}; the rows were sorted."
+    record.add(EntryKind.ORDER, message, Severity.REPAIRED, rows=int((steps < 0).sum()), source=table.source)
+    table.take(np.argsort(table.stamps, kind="stable"))
+
+
+def merge_duplicates(table: Table, record: RecordBuilder, what: str) -> None:
+    """Merge rows of one date whose values are the same.
+
+    Parameters
+    ----------
+    table : Table
+        Changed in place.
+    record : RecordBuilder
+        Where it is said.
+    what : str
+        'date', or the period in which two dates fall.
+
+    Raises
+    ------
+    InputError
+        If rows of one date differ.
+    """
+    again = np.flatnonzero(np.diff(table.stamps.astype(np.int64)) == 0) + 1
+    if not len(again):
+        return
+    for row in again:
+        here, before = table.values[row], table.values[row - 1]
+        differs = ~((here == before) | (np.isnan(here) & np.isnan(before)))
+        if differs.any():
+            column = int(np.flatnonzero(differs)[0])
+            raise InputError(
+                f"{table.row_word.capitalize()}s {table.rows[row - 1]} and {table.rows[row]} of "
+                f"{table.source} are both for "
+                f"{what} {str(table.stamps[row])[:10]} but differ, first in '{table.names[column]}' "
+                f"({before[column]:g} and {here[column]:g})",
+                remedy="remove the wrong row",
+            )
+    record.add(
+        EntryKind.DUPLICATES,
+        f"{len(again)} rows repeat another row of the same {what} (first: {table.place(int(again[0]))}); "
+        "they were merged.",
+        Severity.REPAIRED,
+        rows=len(again),
+        source=table.source,
+    )
+    record.merged(table.source, len(again))
+    keep = np.ones(len(table.stamps), dtype=bool)
+    keep[again] = False
+    table.take(keep)
+
+
+Place = Callable[[int], str]

@@ -1,0 +1,241 @@
+"""Units of each column, and returns or prices: declared, or told from the numbers and said."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
+from soffit.errors import InputError
+from soffit.intake.options import Content, Frequency, Role, Units
+from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
+from soffit.intake.tables import Table
+
+__all__ = ["apply_units", "prices_to_returns", "settle_content", "settle_units"]
+
+Floats = NDArray[np.float64]
+
+# Median absolute return, scaled to a month: below the first a column is decimal, above the second per cent.
+# A decimal 8% is an annual volatility of about 40%; a per-cent 0.5 is one of about 2.6%. Between the two a
+# column could be either, and its neighbours in the source decide. Common practice, no source.
+_SURELY_DECIMAL, _SURELY_PERCENT, _BEYOND_PERCENT = 0.08, 0.5, 45.0
+_SCALE = {Units.DECIMAL: 1.0, Units.PERCENT: 100.0, Units.BASIS_POINTS: 10_000.0}
+_LEAST = 6
+
+
+def settle_content(
+    table: Table, declared: tuple[Content, Mapping[str, Content]], roles: Mapping[str, Role]
+) -> dict[str, Content]:
+    """Say which columns are prices.
+
+    A column is taken for prices when all its values are positive, each is close to the one before, and their
+    level is far above any return. What could be either is refused.
+
+    Raises
+    ------
+    InputError
+        If a column could be prices or returns.
+    """
+    default, named = declared
+    content: dict[str, Content] = {}
+    for position, name in enumerate(table.names):
+        told = named.get(name, default)
+        if roles[name] in (Role.NON_TRADED, Role.RISK_FREE):
+            told = Content.RETURNS
+        content[name] = _content(table, position) if told is Content.DETECT else told
+    return content
+
+
+def _content(table: Table, position: int) -> Content:
+    x = table.values[:, position]
+    x = x[~np.isnan(x)]
+    if len(x) < _LEAST or table.names[position] in table.signs or bool((x <= 0).any()):
+        return Content.RETURNS
+    middle = float(np.median(x))
+    steps = float(np.median(np.abs(np.diff(x)) / x[:-1]))
+    if steps > 0.25 or middle < _SURELY_DECIMAL:
+        return Content.RETURNS
+    if middle > 5.0 or (float(x.min()) > 0.5 and middle > 0.8 and len(x) >= 12):
+        return Content.PRICES
+    raise InputError(
+        f"Column '{table.names[position]}' of {table.source} is always positive and moves little "
+        f"(median {middle:g}): "
+        "it could be prices or returns",
+        remedy=f"say which with content={{'{table.names[position]}': 'prices'}} or 'returns'",
+    )
+
+
+def prices_to_returns(table: Table, content: Mapping[str, Content], record: RecordBuilder) -> None:
+    """Turn price columns into simple returns; the first price is the base.
+
+    Raises
+    ------
+    InputError
+        If a price is not positive.
+    """
+    priced = [i for i, name in enumerate(table.names) if content[name] is Content.PRICES]
+    if not priced:
+        return
+    for i in priced:
+        wrong = np.flatnonzero(table.values[:, i] <= 0)
+        if len(wrong):
+            raise InputError(
+                f"The price of '{table.names[i]}' is {table.values[wrong[0], i]:g} in {table.place(int(wrong[0]))}",
+                allowed="prices above zero",
+                remedy="correct it, or leave the cell empty",
+            )
+        prices = table.values[:, i].copy()
+        table.values[0, i] = np.nan
+        table.values[1:, i] = prices[1:] / prices[:-1] - 1.0
+        table.units[table.names[i]] = "prices"
+    names = [table.names[i] for i in priced]
+    record.add(
+        EntryKind.PRICES,
+        f"Read as prices and turned into simple returns: {listed(names)}. The first price is the "
+        "base, and no return "
+        "is made across a gap.",
+        Severity.REPAIRED,
+        series=names,
+        rows=len(names),
+        source=table.source,
+    )
+    if len(priced) == len(table.names):
+        record.dropped(table.source, 1)
+        record.add(
+            EntryKind.PRICES,
+            f"The row of the first prices, {table.place(0)}, has no return and was dropped.",
+            Severity.REPAIRED,
+            rows=1,
+            source=table.source,
+        )
+        table.take(np.arange(1, len(table.stamps)))
+
+
+def settle_units(
+    table: Table,
+    declared: tuple[Units, Mapping[str, Units]],
+    roles: Mapping[str, Role],
+    record: RecordBuilder,
+) -> dict[str, Units]:
+    """Say the unit of each column of returns, declared or told from its numbers.
+
+    Raises
+    ------
+    InputError
+        If a column could be decimal or per cent and its neighbours do not tell.
+    """
+    default, named = declared
+    found: dict[str, Units] = {}
+    unclear: list[str] = []
+    for position, name in enumerate(table.names):
+        told = named.get(name, default)
+        if roles[name] is Role.NON_TRADED and told is Units.DETECT:
+            continue
+        if table.units.get(name) == "prices":
+            found[name] = Units.DECIMAL
+        elif told is not Units.DETECT:
+            found[name] = told
+        elif name in table.signs:
+            found[name] = Units.PERCENT
+        else:
+            unit = _unit(table, position, roles[name])
+            if unit is None:
+                unclear.append(name)
+            else:
+                found[name] = unit
+    _neighbours(table, found, unclear, record)
+    _say_units(table, found, declared, record)
+    return found
+
+
+def _unit(table: Table, position: int, role: Role) -> Units | None:
+    x = table.values[:, position]
+    x = np.abs(x[~np.isnan(x)])
+    if len(x) == 0:
+        return None
+    if role is Role.RISK_FREE:
+        # Rates do not scale with the root of time, and a low rate in per cent looks like a high one in decimals.
+        yearly = float(np.median(x)) * (table.frequency or Frequency.MONTHLY).periods_per_year
+        return Units.DECIMAL if 0 < yearly < 0.04 else Units.PERCENT if yearly > 0.5 else None
+    if float(np.nanmin(table.values[:, position])) < -1.0 and float(np.median(x)) > 0.02:
+        return Units.PERCENT
+    months = np.sqrt((table.frequency or Frequency.MONTHLY).periods_per_year / 12)
+    middle = float(np.median(x[x > 0])) * months if (x > 0).any() else 0.0
+    if middle > _BEYOND_PERCENT:
+        raise InputError(
+            f"Column '{table.names[position]}' of {table.source} is too large for returns in per "
+            f"cent (median {np.median(x):g})",
+            remedy=f"say what it is: content={{'{table.names[position]}': 'prices'}}, "
+            f"units={{...: 'basis points'}}, "
+            "or roles={...: 'non-traded factor'}",
+        )
+    return Units.DECIMAL if middle < _SURELY_DECIMAL else Units.PERCENT if middle > _SURELY_PERCENT else None
+
+
+def _neighbours(table: Table, found: dict[str, Units], unclear: list[str], record: RecordBuilder) -> None:
+    told = {unit for name, unit in found.items() if table.units.get(name) != "prices"}
+    if not unclear:
+        return
+    if len(told) == 1:
+        unit = told.pop()
+        found.update(dict.fromkeys(unclear, unit))
+        record.add(
+            EntryKind.UNITS,
+            f"{listed(unclear)} could be decimal or per cent by their size; they were taken as {unit.value}, "
+            "like the other columns of the source.",
+            series=unclear,
+            rows=len(unclear),
+            source=table.source,
+        )
+        return
+    x = table.values[:, table.names.index(unclear[0])]
+    if not (x[~np.isnan(x)] != 0).any():
+        found.update(dict.fromkeys(unclear, Units.DECIMAL))
+        return
+    size = float(np.nanmedian(np.abs(x)))
+    raise InputError(
+        f"{listed(unclear)} in {table.source} could be decimal or per cent: a typical value is {size:g}, that is "
+        f"{size:.0%} or {size:.2g}%",
+        remedy="say which with units='decimal' or units='percent'",
+    )
+
+
+def _say_units(
+    table: Table,
+    found: Mapping[str, Units],
+    declared: tuple[Units, Mapping[str, Units]],
+    record: RecordBuilder,
+) -> None:
+    returns = {name: unit for name, unit in found.items() if table.units.get(name) != "prices"}
+    several = len(set(returns.values())) > 1
+    for unit in dict.fromkeys(returns.values()):
+        names = [name for name, one in returns.items() if one is unit]
+        stated = all(declared[1].get(name, declared[0]) is not Units.DETECT for name in names)
+        how = (
+            "as declared"
+            if stated
+            else "told from their size"
+            if not set(names) <= table.signs
+            else "by their per-cent signs"
+        )
+        act = "" if unit is Units.DECIMAL else f" and divided by {_SCALE[unit]:,.0f}"
+        severity = Severity.NOTE if unit is Units.DECIMAL or stated else Severity.REPAIRED
+        record.add(
+            EntryKind.UNITS,
+            f"Returns taken as {unit.value}, {how}{act}: {listed(names)}.",
+            Severity.WARNING if several and not stated and unit is not Units.DECIMAL else severity,
+            series=names,
+            rows=len(names),
+            source=table.source,
+        )
+
+
+def apply_units(table: Table, found: Mapping[str, Units]) -> None:
+    """Make all returns decimal, in place."""
+    for position, name in enumerate(table.names):
+        unit = found.get(name)
+        if unit is not None:
+            table.units.setdefault(name, unit.value)
+            if table.units[name] != "prices" and unit is not Units.DECIMAL:
+                table.values[:, position] /= _SCALE[unit]
