@@ -268,6 +268,8 @@ class TableSpec:
         Heading of the row names.
     footnote : str
         Sample, units, error type, what a dash means.
+    row_forms : tuple of NumberForm
+        For a table of unlike quantities, one a row: the form of each row's numbers, in place of the columns'.
     """
 
     key: str
@@ -276,6 +278,11 @@ class TableSpec:
     frame: pd.DataFrame
     index_heading: str = "Asset"
     footnote: str = ""
+    row_forms: tuple[NumberForm, ...] = ()
+
+    def form_at(self, row: int, column: Column) -> NumberForm:
+        """How the cell in a row, counted from 0, and a column is written."""
+        return self.row_forms[row] if self.row_forms else column.form
 
 
 @dataclass(frozen=True)

@@ -1,1 +1,40 @@
 """One builder a result: what a panel displays and what a memo keeps."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from importlib import import_module
+
+from soffit.errors import SettingError, nearest
+from soffit.present.spec import Exhibit
+from soffit.study import Study
+
+__all__ = ["EXHIBITS", "build"]
+
+# Key of the exhibit and the module whose function ``exhibit(study)`` builds it, in the order of a memo.
+EXHIBITS: dict[str, str] = {
+    "regression": "soffit.present.exhibits.regression",
+    "joint": "soffit.present.exhibits.joint",
+    "ceiling": "soffit.present.exhibits.ceiling",
+}
+
+
+def build(key: str, study: Study) -> Exhibit:
+    """Build one exhibit of a study.
+
+    Parameters
+    ----------
+    key : str
+        One of :data:`EXHIBITS`.
+    study : Study
+        What it is about.
+
+    Raises
+    ------
+    SettingError
+        For an unknown key, with the nearest known ones.
+    """
+    if key not in EXHIBITS:
+        raise SettingError(f"There is no exhibit '{key}'", remedy=nearest(key, EXHIBITS))
+    builder: Callable[[Study], Exhibit] = import_module(EXHIBITS[key]).exhibit
+    return builder(study)

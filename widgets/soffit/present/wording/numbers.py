@@ -86,7 +86,7 @@ def _month(value: Any) -> str:
     return f"{pd.Timestamp(value):%Y-%m}"
 
 
-def show_range(low: float, high: float, form: NumberForm) -> str:
+def show_range(low: Any, high: Any, form: NumberForm) -> str:
     """Write an interval: ``0.41 to 1.20``."""
     return f"{show(low, form)} to {show(high, form)}"
 
