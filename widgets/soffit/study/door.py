@@ -52,7 +52,7 @@ def computed(
             found: R = self._results[key]
             return found
 
-        return cast(Callable[Concatenate[Study, P], R], once)
+        return cast("Callable[Concatenate[Study, P], R]", once)
 
     return decorate
 

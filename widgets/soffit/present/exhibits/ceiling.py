@@ -152,7 +152,8 @@ def _statuses(verdict: CeilingVerdict) -> str:
 def alpha_sigma_figure(study: Study, verdict: CeilingVerdict) -> FigureSpec:
     """Draw alpha against residual volatility with the band ``|α| ≤ g(S)·σ``."""
     regression = verdict.map.regression
-    sigma, alpha = regression.sigma.to_numpy(), regression.alpha.to_numpy()
+    sigma = np.asarray(regression.sigma, dtype=np.float64)
+    alpha = np.asarray(regression.alpha, dtype=np.float64)
     reach = float(sigma.max(initial=0.0)) * 1.08 or 0.01
     x = np.array([0.0, reach])
     factor = float(verdict.map.factor([verdict.ceiling], verdict.form)[0])
@@ -176,7 +177,7 @@ def alpha_r2_figure(study: Study, verdict: CeilingVerdict) -> FigureSpec:
     regression = verdict.map.regression
     alphas, root = regression.alphas, float(np.sqrt(regression.periods_per_year))
     with np.errstate(divide="ignore", invalid="ignore"):
-        y: Floats = np.where(alphas.total > 0, alphas.alpha / alphas.total, 0.0) * root
+        y: Floats = np.where(alphas.total > 0, alphas.alpha / alphas.total, 0.0).astype(np.float64) * root
     # Dense near R² = 1, where the curve falls steeply.
     x = 1.0 - np.linspace(1.0, 0.0, 81) ** 2
     factor = float(verdict.map.factor([verdict.ceiling], verdict.form)[0])
