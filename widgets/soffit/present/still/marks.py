@@ -14,7 +14,10 @@ from soffit.present.theme import Marker, look
 if TYPE_CHECKING:
     from soffit.present.still.sheet import Sheet
 
-__all__ = ["PAINTERS", "marker_style"]
+__all__ = ["PAINTERS", "STATUSES", "marker_style"]
+
+# Roles that judge: they carry a shape wherever they are drawn, and a word in the legend.
+STATUSES = frozenset({Role.INSIDE, Role.STRADDLES, Role.OUTSIDE})
 
 _MARKERS = {
     Marker.CIRCLE: "o",
@@ -121,7 +124,7 @@ def _paint_bars(sheet: Sheet, mark: Bars) -> None:
     else:
         sheet.axes.barh(at, mark.length, height=thick, color=colours, zorder=3)
         sheet.axes.axvline(0, color="#8A8A8A", linewidth=0.7, zorder=3.1)
-    if len(set(mark.roles)) > 1:
+    if STATUSES & set(mark.roles):
         # The role's shape at the tip, so that colour is not the only sign.
         x, y = (at, numbers(mark.length)) if upright else (numbers(mark.length), at)
         tips = Points(mark.key, x, y, mark.names, mark.roles)

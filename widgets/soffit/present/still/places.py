@@ -64,7 +64,8 @@ class Places:
 
     def take(self, box: Box) -> None:
         """Reserve a box whatever stands there."""
-        self._taken = np.vstack([self._taken, [box.x0, box.y0, box.x1, box.y1]])
+        # Labels side by side need a space between them, or they read as one.
+        self._taken = np.vstack([self._taken, [box.x0 - 5, box.y0, box.x1 + 5, box.y1]])
 
     def settle(self, candidates: Sequence[Box]) -> int | None:
         """Choose the candidate that covers least, reserve it, and return its position.

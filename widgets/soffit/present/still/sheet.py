@@ -11,9 +11,9 @@ from matplotlib.figure import Figure
 from matplotlib.font_manager import FontProperties
 from matplotlib.lines import Line2D
 
-from soffit.present.spec import AxisScale, Bars, FigureSpec, Line, Orientation, Points, Role, Segments
-from soffit.present.still.marks import PAINTERS, marker_style
-from soffit.present.still.scales import drawable, last_seen, limits_of, spread_over, stride, ticks_of
+from soffit.present.spec import AxisScale, Bars, FigureSpec, Line, Mark, Orientation, Points, Role, Segments
+from soffit.present.still.marks import PAINTERS, STATUSES, marker_style
+from soffit.present.still.scales import drawable, last_seen, limits_of, stride, ticks_of
 from soffit.present.theme import FONT_FAMILY, look
 
 __all__ = ["Sheet"]
@@ -188,22 +188,23 @@ class Sheet:
     def _legend_entries(self) -> list[tuple[str, Line2D]]:
         entries: dict[str, Line2D] = {}
         for mark in self.spec.marks:
-            if isinstance(mark, Points) or (isinstance(mark, Bars) and len(set(mark.roles)) > 1):
-                used = sorted(set(spread_over(mark.roles, len(mark.names))), key=list(Role).index)
-                for role in used:
-                    word = drawable(mark.label) if len(used) == 1 else look(role).word or str(role)
-                    if word and (len(used) > 1 or mark.label):
-                        entries.setdefault(
-                            word, Line2D([], [], linestyle="none", **marker_style(role, self.size * 0.62))
-                        )
-            elif isinstance(mark, Segments | Bars) and mark.label:
-                role = mark.roles[0] if mark.roles else Role.MUTED
-                thick = 1.4 if isinstance(mark, Segments) else 5.0
-                entries.setdefault(
-                    drawable(mark.label),
-                    Line2D([], [], color=look(role).light, linewidth=thick, solid_capstyle="butt"),
-                )
+            if not isinstance(mark, Points | Segments | Bars):
+                continue
+            used = sorted(set(mark.roles), key=list(Role).index)
+            words = [look(role).word for role in used]
+            if isinstance(mark, Points | Bars) and STATUSES & set(used) and all(words):
+                for role, word in zip(used, words, strict=True):
+                    entries.setdefault(word, self._sample(role, Points))
+            elif mark.label and used:
+                entries.setdefault(drawable(mark.label), self._sample(used[0], type(mark)))
         return list(entries.items())
+
+    def _sample(self, role: Role, kind: type[Mark]) -> Line2D:
+        """A specimen of a mark for the legend."""
+        if kind is Points:
+            return Line2D([], [], linestyle="none", **marker_style(role, self.size * 0.62))
+        thick = 5.0 if kind is Bars else 1.4
+        return Line2D([], [], color=look(role).light, linewidth=thick, solid_capstyle="butt")
 
     def _legend_rows(self, room: float) -> list[list[tuple[str, Line2D, float]]]:
         rows: list[list[tuple[str, Line2D, float]]] = []
