@@ -8,6 +8,7 @@ from pathlib import Path
 import pandas as pd
 import pytest
 
+
 @pytest.fixture(scope="session")
 def french() -> pd.DataFrame:
     """Monthly US returns that ship with linearmodels; decimals, indexed by month."""
@@ -22,5 +23,7 @@ def checks_data() -> Path:
     beside = Path(__file__).resolve().parents[2] / "shared" / "checks" / "data"
     folder = Path(os.environ.get("SOFFIT_CHECKS", beside))
     if not folder.is_dir():
-        pytest.skip(f"the data of the published checks are not here ({folder}); name their folder in SOFFIT_CHECKS")
+        pytest.skip(
+            f"the data of the published checks are not here ({folder}); name their folder in SOFFIT_CHECKS"
+        )
     return folder

@@ -42,7 +42,13 @@ def _joint(frame: pd.DataFrame, assets: list[str], factors: list[str]) -> JointA
     ],
 )
 def test_grs_against_r(
-    french: pd.DataFrame, assets: list[str], factors: list[str], start: str, end: str, value: float, pvalue: float
+    french: pd.DataFrame,
+    assets: list[str],
+    factors: list[str],
+    start: str,
+    end: str,
+    value: float,
+    pvalue: float,
 ) -> None:
     joint = _joint(french.loc[start:end], assets, factors)
     np.testing.assert_allclose(joint.grs.value, value, rtol=1e-9)
@@ -64,7 +70,9 @@ def test_multivariate_intercepts_of_the_dogs_data(checks_data: Path) -> None:
 def test_one_asset_is_the_squared_t_of_longley(checks_data: Path) -> None:
     # NIST StRD Longley: intercept over its certified standard deviation, squared. Evidence A.
     frame = pd.read_csv(checks_data / "nist_longley.csv")
-    joint = joint_alphas(regress(frame[["y"]].to_numpy(float), frame[[f"x{i}" for i in range(1, 7)]].to_numpy(float)))
+    joint = joint_alphas(
+        regress(frame[["y"]].to_numpy(float), frame[[f"x{i}" for i in range(1, 7)]].to_numpy(float))
+    )
     np.testing.assert_allclose(joint.grs.value, 15.294379464644495, rtol=1e-7)
     np.testing.assert_allclose(joint.grs.pvalue, 0.003560403663718, rtol=1e-7)
 
@@ -163,7 +171,13 @@ def test_joint_and_single_bounds_by_hand() -> None:
     assert JointCeiling(joint).fits(1.2703) is True
     np.testing.assert_allclose(bound_factor(1.25, 0.5, CeilingForm.ON_FACTORS) ** 2, 1.3125, rtol=1e-12)
     table = AlphaTable(
-        found.alpha, np.sqrt([4.0, 3.0]), found.r2, found.total, np.full(2, found.t_scale), np.full(2, 6.0), np.zeros(2)
+        found.alpha,
+        np.sqrt([4.0, 3.0]),
+        found.r2,
+        found.total,
+        np.full(2, found.t_scale),
+        np.full(2, 6.0),
+        np.zeros(2),
     )
     np.testing.assert_allclose(table.at(1.25, CeilingForm.ALONE).bound, [2.5, 2.1650635094610964], rtol=1e-12)
 

@@ -60,14 +60,28 @@ NIST = {
     ),
     "wampler3": (
         [1.0] * 6,
-        [2152.3262467817, 2363.55173469681, 779.343524331583, 101.47550755035, 5.64566512170752, 0.112324854679312],
+        [
+            2152.3262467817,
+            2363.55173469681,
+            779.343524331583,
+            101.47550755035,
+            5.64566512170752,
+            0.112324854679312,
+        ],
         2360.14502379268,
         0.99999555902582,
         1e-8,
     ),
     "wampler5": (
         [1.0] * 6,
-        [21523262.467817, 23635517.3469681, 7793435.24331583, 1014755.0755035, 56456.6512170752, 1123.24854679312],
+        [
+            21523262.467817,
+            23635517.3469681,
+            7793435.24331583,
+            1014755.0755035,
+            56456.6512170752,
+            1123.24854679312,
+        ],
         23601450.2379268,
         0.0022466892157494,
         1e-5,
@@ -142,7 +156,12 @@ def test_verbeek_food_industry() -> None:
     fit, through_zero = least_squares(y, x), least_squares(y, x, constant=False)
     got = [*np.column_stack([fit.coefficients[0], fit.errors[0]]).ravel(), fit.r2[0], fit.sigma[0]]
     np.testing.assert_allclose(got, [0.339, 0.128, 0.783, 0.028, 0.598, 2.885], atol=6e-4)
-    got = [through_zero.coefficients[0, 0], through_zero.errors[0, 0], through_zero.r2[0], through_zero.sigma[0]]
+    got = [
+        through_zero.coefficients[0, 0],
+        through_zero.errors[0, 0],
+        through_zero.r2[0],
+        through_zero.sigma[0],
+    ]
     np.testing.assert_allclose(got, [0.79, 0.028, 0.601, 2.902], atol=6e-4)
 
 
@@ -202,7 +221,9 @@ def test_factor_regressions_against_r(french: pd.DataFrame, asset: str) -> None:
     fit = regress(y, x)
     np.testing.assert_allclose(fit.fit.coefficients[0], expected["coef"], rtol=1e-9)
     np.testing.assert_allclose(fit.sigma[0], expected["sigma"], rtol=1e-9)
-    np.testing.assert_allclose([fit.r2[0], fit.fit.adjusted_r2[0]], [expected["r2"], expected["adjusted"]], rtol=1e-9)
+    np.testing.assert_allclose(
+        [fit.r2[0], fit.fit.adjusted_r2[0]], [expected["r2"], expected["adjusted"]], rtol=1e-9
+    )
     np.testing.assert_allclose(errors(ErrorType.CLASSICAL), expected["classical"], rtol=1e-9)
     np.testing.assert_allclose(errors(ErrorType.HC0), expected["hc0"], rtol=1e-9)
     np.testing.assert_allclose(errors(ErrorType.HC1), expected["hc1"], rtol=1e-9)
