@@ -221,7 +221,7 @@ def _turnover(walk: WalkForward) -> Floats:
     """Units of each leg traded over the whole walk, shape (N, K)."""
     traded = np.nansum(walk.trades, axis=0)
     # A hedge is closed when the sample ends, or where the asset's returns stop.
-    alive = np.isfinite(walk.targets).all(axis=2)
+    alive = np.asarray(np.isfinite(walk.targets).all(axis=2), dtype=bool)
     resumed = np.zeros_like(alive)
     whole = np.asarray(np.isfinite(walk.closing).all(axis=2), dtype=bool)
     resumed[:-1] = alive[1:] & whole[:-1]

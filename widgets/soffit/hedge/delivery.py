@@ -113,8 +113,8 @@ class VarianceGap:
         What estimation error adds when betas are constant: the average of σ²·f'S⁻¹f, the textbook variance of a
         prediction.
     drift : ndarray
-        The rest of the plain hedge's delivered variance at the ratios as traded: betas that moved between estimation and use. Zero on
-        average when betas are constant; a negative value is sampling noise.
+        The rest of the plain hedge's delivered variance at the ratios as traded: betas that moved between estimation
+        and use. Zero on average when betas are constant; a negative value is sampling noise.
     drift_error : ndarray
         Standard error of `drift` from its spread over blocks of time; NaN with fewer than four blocks.
     holding : ndarray
