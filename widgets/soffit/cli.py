@@ -1,0 +1,218 @@
+"""The command line: the main job on the analyst's files, or on the demo, without a browser."""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Callable
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from soffit import __version__
+from soffit.errors import EstimationError, InputError, SettingError, SoffitError
+
+if TYPE_CHECKING:
+    from soffit.settings import Settings
+    from soffit.study import Study
+
+__all__ = ["main"]
+
+EXIT_CODES = """
+\b
+Exit codes:
+  0  done
+  2  wrong usage, or a setting that is unknown or out of range
+  3  the data cannot be used as they are
+  4  the sample does not identify what was asked
+  5  done in part: a section failed or a check differs
+"""
+
+_CODES: tuple[tuple[type[SoffitError], int], ...] = ((SettingError, 2), (InputError, 3), (EstimationError, 4))
+
+
+class _Guarded(click.Group):
+    """Turns the package's own errors into one line and an exit code; other errors keep their traceback."""
+
+    def invoke(self, ctx: click.Context) -> Any:
+        try:
+            return super().invoke(ctx)
+        except SoffitError as error:
+            click.secho("Error: ", err=True, nl=False, fg="red")
+            click.echo(str(error), err=True)
+            ctx.exit(next((code for kind, code in _CODES if isinstance(error, kind)), 4))
+
+
+@click.group(
+    cls=_Guarded,
+    context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100},
+    epilog=EXIT_CODES,
+)
+@click.version_option(__version__, prog_name="soffit")
+def main() -> None:
+    """Hold a Sharpe ceiling against the alphas that factors leave over.
+
+    soffit regresses the returns of funds, strategies or portfolios on traded factors, tests the alphas, says how
+    high a Sharpe ratio the market would have to leave on the table for each to be true, and writes a memo.
+    """
+
+
+def _study_options(command: Callable[..., None]) -> Callable[..., None]:
+    options = [
+        click.option(
+            "--settings", "settings_file", type=click.Path(path_type=Path), help="A TOML file of settings."
+        ),
+        click.option(
+            "--set",
+            "sets",
+            multiple=True,
+            metavar="NAME=VALUE",
+            help="Change one setting, such as error_type=HAC or hedge.window=48. May be repeated.",
+        ),
+        click.option(
+            "--ceiling", type=float, help="Highest Sharpe ratio, a year, that this market could sustain."
+        ),
+        click.option("--out", type=click.Path(file_okay=False, path_type=Path), help="Folder for the memo."),
+        click.option(
+            "--format",
+            "formats",
+            multiple=True,
+            metavar="FORMAT",
+            help="Format of the memo, html if left out: html, docx, pdf, xlsx, latex, markdown or pptx. Repeatable.",
+        ),
+    ]
+    for option in reversed(options):
+        command = option(command)
+    return command
+
+
+@main.command()
+@_study_options
+def demo(
+    settings_file: Path | None,
+    sets: tuple[str, ...],
+    ceiling: float | None,
+    out: Path | None,
+    formats: tuple[str, ...],
+) -> None:
+    """Do the main job on an invented desk and write its memo.
+
+    The scenario is generated with a fixed seed: fourteen strategies, four traded factors, twenty years of months.
+    Its files are written beside the memo, so that every number can be re-run with 'soffit judge'.
+    """
+    from soffit.demo import demo_frames
+    from soffit.settings import Histories, Settings
+    from soffit.study import Study
+
+    folder = out or Path("soffit-memo")
+    folder.mkdir(parents=True, exist_ok=True)
+    returns, factors = demo_frames()
+    files = folder / "returns.csv", folder / "factors.csv"
+    returns.to_csv(files[0], float_format="%.8f")
+    factors.to_csv(files[1], float_format="%.8f")
+    base = Settings.load(settings_file) if settings_file else Settings(histories=Histories.OWN)
+    study = Study.open(*files, risk_free="Cash", settings=_with(base, sets, ceiling))
+    _report(study, folder, formats)
+
+
+@main.command()
+@click.argument("returns", type=click.Path(path_type=Path))
+@click.option("--factors", type=click.Path(path_type=Path), help="File of the traded factors' returns.")
+@click.option("--risk-free", metavar="COLUMN", help="Column of the risk-free return, in either file.")
+@click.option("--excess/--raw", default=None, help="Whether the risk-free return is already taken off.")
+@click.option(
+    "--units", metavar="UNIT", help="decimal, percent or basis points; told from the data if left out."
+)
+@click.option("--roles", type=click.Path(path_type=Path), help="A TOML file that says what each column is.")
+@_study_options
+def judge(
+    returns: Path,
+    factors: Path | None,
+    risk_free: str | None,
+    excess: bool | None,
+    units: str | None,
+    roles: Path | None,
+    settings_file: Path | None,
+    sets: tuple[str, ...],
+    ceiling: float | None,
+    out: Path | None,
+    formats: tuple[str, ...],
+) -> None:
+    r"""Judge the alphas in RETURNS against a Sharpe ceiling.
+
+    RETURNS holds one row a period and one column a series, the dates first. With --out a memo is written.
+
+    \b
+    Example:
+      soffit judge returns.csv --factors factors.csv --ceiling 1.0 --out memo
+    """
+    from soffit.settings import Settings
+    from soffit.study import Study
+
+    settings = _with(Settings.load(settings_file) if settings_file else Settings(), sets, ceiling)
+    options: dict[str, Any] = {"risk_free": risk_free, "excess": excess, "units": units, "roles": roles}
+    given = {name: value for name, value in options.items() if value is not None}
+    _report(Study.open(returns, factors, settings=settings, **given), out, formats)
+
+
+def _with(settings: Settings, sets: tuple[str, ...], ceiling: float | None) -> Settings:
+    values: dict[str, Any] = dict(_parsed(item) for item in sets)
+    if ceiling is not None:
+        values["ceiling"] = ceiling
+    return settings.changed(values)
+
+
+def _parsed(item: str) -> tuple[str, Any]:
+    """Read NAME=VALUE; the value is TOML where it can be, else plain text."""
+    import tomllib
+
+    name, equals, text = item.partition("=")
+    if not equals:
+        raise SettingError(f"--set {item} has no '='", allowed="NAME=VALUE, such as ceiling=0.8")
+    try:
+        return name.strip(), tomllib.loads(f"value = {text}")["value"]
+    except tomllib.TOMLDecodeError:
+        return name.strip(), text.strip()
+
+
+def _report(study: Study, out: Path | None, formats: tuple[str, ...]) -> None:
+    """Print the sample, the findings and the verdicts, and write the memo where one is asked for."""
+    from soffit.present.cautions import CAUTIONS
+    from soffit.present.exhibits import build
+    from soffit.present.plain import table_text
+
+    exhibits = [build(key, study) for key in ("regression", "joint", "ceiling")]
+    click.echo(exhibits[-1].sample)
+    for exhibit in exhibits:
+        click.echo()
+        click.secho(exhibit.title, bold=True)
+        click.echo(exhibit.finding.text)
+        for note in exhibit.notes:
+            click.echo(f"Note: {note}")
+    click.echo()
+    click.echo(table_text(exhibits[-1].tables[0], most=40))
+    warnings = [entry for entry in study.record.entries if entry.severity != "note"]
+    if warnings:
+        click.echo()
+        click.secho("Intake", bold=True)
+        for entry in warnings:
+            click.echo(f"{entry.severity}: {entry.message}")
+    if out is not None:
+        _write_memo(study, exhibits, out, formats)
+    click.echo()
+    click.echo(" ".join((CAUTIONS[0], *CAUTIONS[-2:])))
+
+
+def _write_memo(study: Study, exhibits: list[Any], out: Path, formats: tuple[str, ...]) -> None:
+    from soffit.memo import Pack, write
+
+    pack = Pack(study, title="Alphas under a Sharpe ceiling")
+    for exhibit in exhibits:
+        pack.keep(exhibit)
+    click.echo()
+    for path in write(pack, out, formats or ("html",)):
+        click.echo(f"Wrote {path}")
+
+
+if __name__ == "__main__":
+    sys.exit(main())
