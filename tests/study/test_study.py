@@ -5,13 +5,13 @@ from __future__ import annotations
 import numpy as np
 import pandas as pd
 import pytest
+from tests.universes import INDUSTRIES
 
 from soffit.errors import EstimationError, SettingError
 from soffit.estimate.regression import regress
 from soffit.estimate.statistic import NotApplicable
 from soffit.settings import CeilingForm, Histories, Settings
 from soffit.study import Study, factor_regression
-from tests.universes import INDUSTRIES
 
 
 @pytest.fixture
