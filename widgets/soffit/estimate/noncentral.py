@@ -7,6 +7,9 @@ their relative accuracy: about 1e-10 wherever the probability is above 1e-280.
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from typing import Any
+
 import numpy as np
 import numpy.typing as npt
 from scipy import optimize, special
@@ -394,10 +397,17 @@ def _poisson_mixture(
     beta_tail = special.betaincc if upper else special.betainc
     out = np.empty(shifts.shape)
     for place, shift in np.ndenumerate(shifts):
-        mean = 0.5 * shift
-        reach = 40.0 * np.sqrt(mean) + 200.0
-        j = np.arange(max(0.0, np.floor(mean - reach)), np.ceil(mean + reach) + 1.0)
-        weight = np.exp(special.xlogy(j, mean) - mean - special.gammaln(j + 1.0))
-        # The window leaves out less than 1e-300: dividing by the sum removes the rounding of the logs.
-        out[place] = min(float(weight @ beta_tail(0.5 * dfn + j, 0.5 * dfd, x)) / float(weight.sum()), 1.0)
+        # Twelve standard deviations leave out less than 1e-30; only a deep tail needs more.
+        value = _mixture(0.5 * shift, 12.0, 0.5 * dfn, 0.5 * dfd, x, beta_tail)
+        out[place] = (
+            _mixture(0.5 * shift, 40.0, 0.5 * dfn, 0.5 * dfd, x, beta_tail) if value < 1e-15 else value
+        )
     return out
+
+
+def _mixture(mean: float, deviations: float, a: float, b: float, x: float, tail: Callable[..., Any]) -> float:
+    reach = deviations * np.sqrt(mean) + 5.0 * deviations
+    j = np.arange(max(0.0, np.floor(mean - reach)), np.ceil(mean + reach) + 1.0)
+    weight = np.exp(special.xlogy(j, mean) - mean - special.gammaln(j + 1.0))
+    # What the window leaves out is negligible: dividing by the sum removes the rounding of the logs.
+    return min(float(weight @ tail(a + j, b, x)) / float(weight.sum()), 1.0)
