@@ -1,0 +1,109 @@
+"""The command line: the main job, its messages and its exit codes."""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+from pathlib import Path
+
+import pytest
+from click.testing import CliRunner, Result
+
+from soffit.cli import main
+from soffit.demo import demo_frames, demo_study
+from soffit.present.exhibits import build
+
+
+@pytest.fixture
+def files(tmp_path: Path) -> tuple[Path, Path]:
+    returns, factors = demo_frames()
+    paths = tmp_path / "returns.csv", tmp_path / "factors.csv"
+    returns.to_csv(paths[0])
+    factors.to_csv(paths[1])
+    return paths
+
+
+def _run(*arguments: str | Path) -> Result:
+    return CliRunner().invoke(main, [str(argument) for argument in arguments], catch_exceptions=False)
+
+
+def test_judge_prints_the_findings_that_the_panel_shows(files: tuple[Path, Path]) -> None:
+    result = _run(
+        "judge", files[0], "--factors", files[1], "--risk-free", "Cash", "--ceiling", "1.4",
+        "--set", "histories='own history'",
+    )  # fmt: skip
+    assert result.exit_code == 0
+    study = demo_study().changed(ceiling=1.4)
+    for key in ("regression", "joint", "ceiling"):
+        assert build(key, study).finding.text in result.output
+    assert "Larch Steady Income" in result.output
+    assert "Past returns do not tell future ones." in result.output
+    assert "not investment advice" in result.output
+
+
+def test_demo_writes_a_memo_and_its_data(tmp_path: Path) -> None:
+    result = _run("demo", "--out", tmp_path / "memo")
+    assert result.exit_code == 0
+    written = {path.name for path in (tmp_path / "memo").rglob("*") if path.is_file()}
+    assert {"memo.html", "returns.csv", "factors.csv"} <= written
+    page = (tmp_path / "memo" / "memo.html").read_text(encoding="utf-8")
+    assert build("ceiling", demo_study()).finding.text.replace("'", "&#39;") in page or (
+        build("ceiling", demo_study()).finding.text in page
+    )
+    assert {".png", ".svg", ".pdf"} <= {Path(name).suffix for name in written}
+
+
+@pytest.mark.parametrize(
+    ("arguments", "code", "message"),
+    [
+        (["--ceiling", "-1"], 2, "'ceiling' is -1.0"),
+        (["--set", "cieling=1"], 2, "did you mean 'ceiling'"),
+        (["--set", "ceiling"], 2, "has no '='"),
+        (["--set", "error_type=HC7"], 2, "HC3"),
+        (["--units", "permille"], 2, "percent"),
+        (["--risk-free", "Kash"], 3, "Cash"),
+        (["--set", "start=2024-06-01"], 4, "rows"),
+    ],
+)
+def test_refusals_have_their_exit_codes(
+    files: tuple[Path, Path], arguments: list[str], code: int, message: str
+) -> None:
+    result = _run("judge", files[0], "--factors", files[1], *arguments)
+    assert result.exit_code == code, result.output
+    assert message in result.output
+    assert "Traceback" not in result.output
+
+
+def test_missing_and_empty_files(files: tuple[Path, Path], tmp_path: Path) -> None:
+    result = _run("judge", tmp_path / "retruns.csv", "--factors", files[1])
+    assert result.exit_code == 3
+    assert "returns.csv" in result.output
+    empty = tmp_path / "empty.csv"
+    empty.write_text("")
+    result = _run("judge", empty, "--factors", files[1])
+    assert result.exit_code == 3
+    assert "empty" in result.output
+
+
+def test_help_names_the_commands_and_the_exit_codes() -> None:
+    result = _run("--help")
+    assert result.exit_code == 0
+    assert all(
+        word in result.output for word in ("demo", "judge", "Exit codes", "3  the data cannot be used")
+    )
+    assert "soffit judge returns.csv --factors factors.csv --ceiling 1.0" in _run("judge", "--help").output
+
+
+def test_import_loads_nothing_heavy() -> None:
+    # `import soffit` stays quick because nothing heavy is imported until a name is used.
+    code = "import soffit, sys; print([m for m in ('pandas', 'numpy', 'bqplot', 'statsmodels') if m in sys.modules])"
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
+    assert done.stdout.strip() == "[]"
+
+
+def test_unknown_public_name_is_refused_with_the_nearest() -> None:
+    import soffit
+
+    with pytest.raises(AttributeError, match="CeilingPanel"):
+        _ = soffit.CeilngPanel
+    assert set(dir(soffit)) >= {"Study", "Settings", "CeilingPanel", "Pack"}
