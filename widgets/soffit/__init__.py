@@ -22,8 +22,10 @@ _HOMES: dict[str, str] = {
     "Pack": "soffit.memo",
     "Settings": "soffit.settings",
     "Study": "soffit.study",
+    "build": "soffit.present.exhibits",
     "demo_study": "soffit.demo",
     "open_panel": "soffit.intake",
+    "write": "soffit.memo",
 }
 
 __all__ = [
@@ -36,8 +38,10 @@ __all__ = [
     "Settings",
     "Study",
     "__version__",
+    "build",
     "demo_study",
     "open_panel",
+    "write",
 ]
 
 
