@@ -322,7 +322,7 @@ def _peak(a: Floats, b: Floats, df: Floats) -> tuple[Floats, Floats]:
         return value
 
     mode_of_w = np.sqrt((df - 1.0) / df)
-    with np.errstate(divide="ignore", invalid="ignore"):
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
         far = np.maximum(mode_of_w, np.where(a > 0, -b / a, 0.0)) + 0.8 * np.abs(a) / df
     near_bound = mode_of_w + np.abs(a) * (0.8 + np.maximum(-b, 0.0)) / df
     low = np.where(a > 0, mode_of_w, 0.0)
