@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
@@ -9,13 +11,15 @@ from numpy.typing import NDArray
 from soffit.errors import InputError
 from soffit.intake.options import Frequency, Role
 from soffit.intake.periods import month_text
+from soffit.intake.quality import check_late_starters, check_survivors
 from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
 from soffit.intake.tables import Table
 
-__all__ = ["check_assets", "check_copies", "check_factors", "check_losses", "check_one_name", "coverage_row"]
+__all__ = ["Spans", "check_copies", "check_factors", "check_histories", "check_losses", "check_one_name"]
 
 Floats = NDArray[np.float64]
 _SAME = 1e-10
+_EQUAL = 1e-9
 
 
 def check_losses(table: Table, roles: dict[str, Role], record: RecordBuilder) -> None:
@@ -26,14 +30,15 @@ def check_losses(table: Table, roles: dict[str, Role], record: RecordBuilder) ->
     InputError
         If an asset's return is below -100%.
     """
-    low = np.where(np.isnan(table.values), 0.0, table.values).min(axis=0, initial=0.0)
+    low = np.fmin.reduce(table.values, axis=0)
     for position in np.flatnonzero(low <= -1.0):
         name, role = table.names[position], roles[table.names[position]]
         if role is Role.NON_TRADED:
             continue
         column = table.values[:, position]
-        row = int(np.flatnonzero(column <= -1.0)[0])
-        if column[row] < -1.0 and role in (Role.ASSET, Role.RISK_FREE):
+        worst = float(low[position])
+        row = int(np.flatnonzero(column <= (worst if worst < -1.0 else -1.0))[0])
+        if worst < -1.0 and role in (Role.ASSET, Role.RISK_FREE):
             raise InputError(
                 f"'{name}' returns {column[row]:.1%} in {table.place(row)}: nothing loses more than all its value",
                 remedy="correct it, declare a missing code with missing=(...), or the unit with "
@@ -60,7 +65,7 @@ def check_one_name(tables: list[Table], roles: dict[str, Role], record: RecordBu
     """
     for later in range(1, len(tables)):
         for earlier in range(later):
-            for name in [n for n in tables[later].names if n in tables[earlier].names]:
+            for name in _shared(tables[earlier].names, tables[later].names):
                 first, second = tables[earlier], tables[later]
                 if roles[name] is Role.RISK_FREE and _agree(first, second, name):
                     record.add(
@@ -80,6 +85,11 @@ def check_one_name(tables: list[Table], roles: dict[str, Role], record: RecordBu
                 )
 
 
+def _shared(first: list[str], second: list[str]) -> list[str]:
+    known = set(first)
+    return [name for name in second if name in known]
+
+
 def _agree(first: Table, second: Table, name: str) -> bool:
     a = pd.Series(first.values[:, first.names.index(name)], index=pd.DatetimeIndex(first.stamps))
     b = pd.Series(second.values[:, second.names.index(name)], index=pd.DatetimeIndex(second.stamps))
@@ -87,16 +97,21 @@ def _agree(first: Table, second: Table, name: str) -> bool:
     return len(both) > 0 and bool(np.allclose(both.iloc[:, 0], both.iloc[:, 1], rtol=0, atol=1e-8))
 
 
-def check_factors(factors: pd.DataFrame) -> None:
+def check_factors(names: list[str], x: Floats) -> None:
     """Refuse factors that are constant, copies of one another, or add up to one another.
+
+    Parameters
+    ----------
+    names : list of str
+        K names.
+    x : ndarray
+        T×K returns without NaN.
 
     Raises
     ------
     InputError
         With the names of the factors at fault.
     """
-    x = factors.to_numpy()
-    names = list(factors.columns)
     spread = x.std(axis=0)
     for position in np.flatnonzero(spread <= 1e-14 + 1e-12 * np.abs(x).max(axis=0, initial=0.0)):
         raise InputError(
@@ -106,92 +121,131 @@ def check_factors(factors: pd.DataFrame) -> None:
     if len(names) < 2 or len(x) < 3:
         return
     z = (x - x.mean(axis=0)) / spread / np.sqrt(len(x))
-    correlation = z.T @ z
-    for i in range(len(names)):
-        for j in range(i):
-            if abs(correlation[i, j]) > 1 - _SAME:
-                word = "a copy" if np.allclose(x[:, i], x[:, j], rtol=0, atol=1e-12) else "an exact multiple"
-                raise InputError(
-                    f"The factor '{names[i]}' is {word} of '{names[j]}'",
-                    remedy=f"keep one: roles={{'{names[i]}': 'ignored'}}",
-                )
+    alike = np.argwhere(np.tril(np.abs(z.T @ z) > 1 - _SAME, k=-1))
+    for later, earlier in alike:
+        same = np.allclose(x[:, later], x[:, earlier], rtol=0, atol=1e-12)
+        raise InputError(
+            f"The factor '{names[later]}' is {'a copy' if same else 'an exact multiple'} of '{names[earlier]}'",
+            remedy=f"keep one: roles={{'{names[later]}': 'ignored'}}",
+        )
     if len(x) > len(names):
         _, singular, right = np.linalg.svd(z, full_matrices=False)
         if singular[-1] < 1e-8 * singular[0]:
-            parts = [names[k] for k in np.flatnonzero(np.abs(right[-1]) > 1e-4)]
+            tied = [names[k] for k in np.flatnonzero(np.abs(right[-1]) > 1e-4)]
             raise InputError(
-                f"The factors {listed(parts)} are tied: each is an exact combination of the others",
+                f"The factors {listed(tied)} are tied: each is an exact combination of the others",
                 remedy="remove one of them",
             )
 
 
-def check_copies(assets: pd.DataFrame, factors: pd.DataFrame, record: RecordBuilder) -> None:
+def check_copies(names: list[str], x: Floats, factors: list[str], f: Floats, record: RecordBuilder) -> None:
     """Refuse an asset that is a factor; say which assets are copies of one another.
+
+    Parameters
+    ----------
+    names, factors : list of str
+        N assets and K factors.
+    x, f : ndarray
+        T×N and T×K returns; the assets may have NaN.
+    record : RecordBuilder
+        Where it is said.
 
     Raises
     ------
     InputError
         If an asset equals a factor on all their dates.
     """
-    values = assets.to_numpy()
-    for name in factors.columns:
-        target = factors[name].to_numpy()[:, None]
-        off = np.nan_to_num(np.abs(values - target)).max(axis=0, initial=0.0)
-        for position in map(int, np.flatnonzero((off < 1e-9) & ((~np.isnan(values)).sum(axis=0) > 1))):
-            asset = assets.columns[position]
-            raise InputError(
-                f"The asset '{asset}' equals the factor '{name}' on every date: its alpha would "
-                "be zero by construction",
-                remedy=f"ignore one of them, such as roles={{'{asset}': 'ignored'}}",
-            )
     seen: dict[bytes, str] = {}
-    for column, name in enumerate(assets.columns):
-        key = (np.round(values[:, column], 12) + 0.0).tobytes()
-        if key in seen and not np.isnan(values[:, column]).all():
+    for position, name in enumerate(names):
+        held = ~np.isnan(x[:, position])
+        if held.sum() < 2:
+            continue
+        off = np.abs(x[held, position][:, None] - f[held]).max(axis=0, initial=0.0)
+        for k in np.flatnonzero(off < _EQUAL):
+            raise InputError(
+                f"The asset '{name}' equals the factor '{factors[k]}' on every date: "
+                "its alpha would be zero by construction",
+                remedy=f"ignore one of them, such as roles={{'{name}': 'ignored'}}",
+            )
+        key = (np.round(x[:, position], 12) + 0.0).tobytes()
+        if key in seen:
             record.add(
                 EntryKind.COPIES,
                 f"The asset '{name}' is a copy of '{seen[key]}'; both were kept, and no joint "
                 "test exists with both.",
                 Severity.WARNING,
-                series=[seen[key], str(name)],
-                rows=len(assets),
+                series=[seen[key], name],
+                rows=len(x),
             )
-        seen.setdefault(key, str(name))
+        seen.setdefault(key, name)
 
 
-def check_assets(assets: pd.DataFrame, frequency: Frequency, record: RecordBuilder) -> None:
-    """Say which assets start late, end early, have gaps inside, or never move."""
-    held = assets.notna().to_numpy()
-    counts = held.sum(axis=0)
-    first, last = held.argmax(axis=0), len(held) - 1 - held[::-1].argmax(axis=0)
-    inside = last - first + 1 - counts
-    names = [str(name) for name in assets.columns]
-    dates = assets.index.to_numpy()
-    short = np.flatnonzero((counts > 0) & ((first > 0) | (last < len(held) - 1)))
+@dataclass(frozen=True, eq=False)
+class Spans:
+    """Where the values of n series stand.
+
+    Parameters
+    ----------
+    first, last : ndarray of int
+        Position of the first and last value; 0 and -1 for a series without values.
+    count, gaps : ndarray of int
+        Number of values, and of periods without one between the first and the last.
+    """
+
+    first: NDArray[np.int64]
+    last: NDArray[np.int64]
+    count: NDArray[np.int64]
+    gaps: NDArray[np.int64]
+
+    @classmethod
+    def of(cls, x: Floats) -> Spans:
+        """The spans of the columns of a T×n array."""
+        held = ~np.isnan(x)
+        count = held.sum(axis=0)
+        first = held.argmax(axis=0)
+        last = np.where(count > 0, len(held) - 1 - held[::-1].argmax(axis=0), -1)
+        return cls(first, last, count, np.where(count > 0, last - first + 1 - count, 0))
+
+
+def check_histories(
+    names: list[str], x: Floats, dates: NDArray[np.datetime64], frequency: Frequency, record: RecordBuilder
+) -> None:
+    """Say which assets start late, end early, have gaps inside, or never move; ask about survivors and backfill."""
+    spans = Spans.of(x)
+    short = np.flatnonzero((spans.first > 0) | (spans.last < len(x) - 1))
     if len(short):
-        spans = [
-            f"'{names[i]}' ({month_text(dates[first[i]], frequency)} to {month_text(dates[last[i]], frequency)})"
+        shown = [
+            f"'{names[i]}' ({month_text(dates[spans.first[i]], frequency)} to "
+            f"{month_text(dates[spans.last[i]], frequency)})"
             for i in short
         ]
         record.add(
             EntryKind.HISTORY,
-            f"Shorter than the panel: {listed(spans, quote='')}.",
+            f"Shorter than the panel: {listed(shown, quote='')}.",
             Severity.WARNING,
             series=[names[i] for i in short],
             rows=len(short),
         )
-    gaps = np.flatnonzero(inside > 0)
+    gaps = np.flatnonzero(spans.gaps > 0)
     if len(gaps):
-        shown = [f"'{names[i]}' ({inside[i]})" for i in gaps]
+        shown = [f"'{names[i]}' ({spans.gaps[i]})" for i in gaps]
         record.add(
             EntryKind.GAPS,
             f"No value inside their history: {listed(shown, quote='')}. Nothing was filled in.",
             Severity.WARNING,
             series=[names[i] for i in gaps],
-            rows=int(inside[gaps].sum()),
+            rows=int(spans.gaps[gaps].sum()),
         )
-    values = assets.to_numpy()
-    flat = [names[i] for i in range(len(names)) if counts[i] > 1 and np.ptp(values[held[:, i], i]) <= 1e-14]
+    lone = [names[i] for i in np.flatnonzero(spans.count == 1)]
+    if lone:
+        record.add(
+            EntryKind.HISTORY,
+            f"Only one value: {listed(lone)}.",
+            Severity.WARNING,
+            series=lone,
+            rows=len(lone),
+        )
+    flat = [names[i] for i in range(len(names)) if spans.count[i] > 1 and _flat(x[:, i])]
     if flat:
         record.add(
             EntryKind.CONSTANT,
@@ -200,20 +254,9 @@ def check_assets(assets: pd.DataFrame, frequency: Frequency, record: RecordBuild
             series=flat,
             rows=len(flat),
         )
+    check_survivors(spans.first, spans.last, len(x), record)
+    check_late_starters(x, spans.first, record)
 
 
-def coverage_row(series: pd.Series[float], role: Role, unit: str, source: str) -> list[object]:
-    """First and last date, number of values, gaps inside, role, unit and source of one series."""
-    held = series.notna().to_numpy()
-    if not held.any():
-        return [pd.NaT, pd.NaT, 0, 0, role.value, unit, source]
-    where = np.flatnonzero(held)
-    return [
-        series.index[where[0]],
-        series.index[where[-1]],
-        len(where),
-        int(where[-1] - where[0] + 1 - len(where)),
-        role.value,
-        unit,
-        source,
-    ]
+def _flat(x: Floats) -> bool:
+    return bool(np.nanmax(x) - np.nanmin(x) <= 1e-14)

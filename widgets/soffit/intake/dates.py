@@ -71,6 +71,12 @@ def _two_digit(year: str) -> int:
     return number if len(year) == 4 else 1900 + number if number >= 69 else 2000 + number
 
 
+def _spreadsheet_day(count: int) -> _Day:
+    day = np.datetime64("1899-12-30", "D") + np.timedelta64(count, "D")
+    year, month, number = str(day).split("-")
+    return int(year), int(month), int(number)
+
+
 def _form(
     example: str,
     pattern: str,
@@ -82,6 +88,7 @@ def _form(
 
 
 _CLOCK = r"(?:[T ]\d{1,2}:\d{2}(?::\d{2}(?:\.\d+)?)?(?:Z|[+-]\d{2}:?\d{2})?)?"
+_FIRST_YEAR, _LAST_YEAR = 1700, 2200
 _EPOCH = re.compile(r"1970-\d{2}-\d{2}[T ]\d{2}:\d{2}:\d{2}(?:\.\d+)?", re.ASCII)
 _Y_END = "years stand for their last day"
 _Q_END = "quarters stand for their last day"
@@ -94,6 +101,8 @@ _FORMS = (
     _form("1990-03", r"(\d{4})[-/. ]?m?(?:(?<=[-/. m]))(\d{1,2})", lambda m: (int(m[1]), int(m[2]), 1),
           Frequency.MONTHLY),
     _form("03/1990", r"(\d{1,2})[-/.](\d{4})", lambda m: (int(m[2]), int(m[1]), 1), Frequency.MONTHLY),
+    _form("32963", r"([1-9]\d{4})(?:\.0)?", lambda m: _spreadsheet_day(int(m[1])), None,
+          "whole numbers of five digits are a spreadsheet's count of days"),
     _form("1990Q1", r"(\d{4})[-/. ]?q([1-4])", lambda m: (int(m[1]), 3 * int(m[2]), 1), Frequency.QUARTERLY,
           _Q_END),
     _form("Q1 1990", r"q([1-4])[-/. ]?(\d{4})", lambda m: (int(m[2]), 3 * int(m[1]), 1), Frequency.QUARTERLY,
@@ -128,7 +137,7 @@ _MONTH_FIRST = _form(
 
 def _stamp(day: _Day) -> np.datetime64 | None:
     year, month, number = day
-    if not (1600 <= year <= 2200 and 1 <= month <= 12 and number >= 1):
+    if not (_FIRST_YEAR <= year <= _LAST_YEAR and 1 <= month <= 12 and number >= 1):
         return None
     first = np.datetime64(f"{year:04d}-{month:02d}", "M")
     result = first.astype("datetime64[D]") + np.timedelta64(number - 1, "D")
@@ -246,6 +255,13 @@ def _from_datetimes(index: pd.DatetimeIndex, place: Callable[[int], str]) -> Dat
             Severity.REPAIRED,
         )
         return dates
+    wild = np.flatnonzero((index.year < _FIRST_YEAR) | (index.year > _LAST_YEAR))
+    if len(wild):
+        raise InputError(
+            f"The date {str(index[wild[0]])[:10]} in {place(int(wild[0]))} is out of range",
+            allowed=f"the years {_FIRST_YEAR} to {_LAST_YEAR}",
+            remedy="correct the date",
+        )
     dates = Dates(_days(index))
     if index.tz is not None:
         dates.note(
@@ -300,15 +316,6 @@ def _from_numbers(numbers: NDArray[np.float64], place: Callable[[int], str]) -> 
             f"{numbers[row]:g} in {place(row)} is not a date",
             allowed="dates, or whole numbers such as 199003 or 19900331",
         )
-    if len(whole) and bool(((whole >= 10_000) & (whole <= 99_999)).all()):
-        stamps = (np.datetime64("1899-12-30", "D") + whole.astype("timedelta64[D]")).astype("datetime64[ns]")
-        dates = Dates(stamps)
-        dates.note(
-            f"Whole numbers such as {whole[0]} are read as spreadsheet day numbers "
-            f"({_spelled(stamps[0], None)}).",
-            Severity.REPAIRED,
-        )
-        return dates
     return _from_text([str(number) for number in whole], place)
 
 

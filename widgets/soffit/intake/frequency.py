@@ -20,9 +20,9 @@ from soffit.intake.periods import (
     refuse_finer,
 )
 from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
-from soffit.intake.tables import Table, merge_duplicates
+from soffit.intake.tables import PRICES, Table, merge_duplicates
 
-__all__ = ["to_one_calendar"]
+__all__ = ["consecutive", "tell_frequency", "to_one_calendar"]
 
 # A column with fewer values than this follows the dates of its source; and a period is kept only when a
 # column has at least this share of the period's rows. Common practice, no source.
@@ -72,6 +72,14 @@ def tell_frequency(table: Table, declared: Frequency | None, record: RecordBuild
         )
         found = fine
     table.frequency = found
+    table.slow = _slow_columns(table, found)
+    for name, kind in table.slow.items():
+        record.add(
+            EntryKind.FREQUENCY,
+            f"'{name}' has {kind.value} values among {found.value} rows.",
+            series=name,
+            source=table.source,
+        )
     record.add(
         EntryKind.FREQUENCY,
         f"Observed {found.value}: {len(table.stamps):,} rows from {month_text(table.stamps[0], found)} "
@@ -81,17 +89,29 @@ def tell_frequency(table: Table, declared: Frequency | None, record: RecordBuild
     )
 
 
-def slow_columns(table: Table) -> dict[str, Frequency]:
+def _slow_columns(table: Table, base: Frequency) -> dict[str, Frequency]:
     """Columns observed less often than their source, such as a monthly index among daily ones."""
-    base = table.frequency
     slow: dict[str, Frequency] = {}
     empty = np.isnan(table.values).sum(axis=0)
     for position in np.flatnonzero(empty > len(table.stamps) // 2):
         dates = table.stamps[~np.isnan(table.values[:, position])]
         found = detect_frequency(dates) if len(dates) >= _LEAST_DATES else None
-        if found is not None and base is not None and COARSENESS[found] > COARSENESS[base]:
+        if found is not None and COARSENESS[found] > COARSENESS[base]:
             slow[table.names[position]] = found
     return slow
+
+
+def consecutive(stamps: NDArray[np.datetime64], frequency: Frequency) -> NDArray[np.bool_]:
+    """Whether each period end follows the one before without a gap; a week at most between days."""
+    days = np.diff(stamps.astype("datetime64[D]")).astype(np.int64)
+    most = {
+        Frequency.DAILY: 7,
+        Frequency.WEEKLY: 7,
+        Frequency.MONTHLY: 31,
+        Frequency.QUARTERLY: 92,
+        Frequency.ANNUAL: 366,
+    }
+    return days <= most[frequency]
 
 
 def to_one_calendar(
@@ -107,20 +127,19 @@ def to_one_calendar(
     InputError
         If a finer frequency is asked for, weeks would have to be cut, or two rows fall in one period and differ.
     """
-    slow = {table.source: slow_columns(table) for table in tables}
     found = [table.frequency for table in tables if table.frequency is not None]
-    found += [kind for columns in slow.values() for kind in columns.values()]
+    found += [kind for table in tables for kind in table.slow.values()]
     target = declared or max(found, key=lambda kind: COARSENESS[kind])
     for table in tables:
         assert table.frequency is not None
-        for kind in (table.frequency, *slow[table.source].values()):
+        for kind in (table.frequency, *table.slow.values()):
             refuse_finer(target, kind, table.source)
     code = _common_anchor(tables, target)
     for table in tables:
         if table.frequency is target:
             _to_period_ends(table, code, target, record)
         else:
-            _compound(table, code, target, roles, set(slow[table.source]), record)
+            _compound(table, code, target, roles, record)
         table.frequency = target
         _report_holes(table, code, target, record)
     return target
@@ -167,14 +186,13 @@ def _opens(stamps: NDArray[np.datetime64], target: Frequency) -> bool:
 
 
 def _compound(
-    table: Table,
-    code: str,
-    target: Frequency,
-    roles: Mapping[str, Role],
-    slow: set[str],
-    record: RecordBuilder,
+    table: Table, code: str, target: Frequency, roles: Mapping[str, Role], record: RecordBuilder
 ) -> None:
-    """Compound returns within each period; non-traded series keep their last value."""
+    """Compound returns within each period; prices and non-traded series keep their last value.
+
+    A series has a value in a period when it has one in three quarters of the period's rows, or, for prices, in
+    the last quarter of them.
+    """
     source = table.frequency
     assert source is not None
     if source is Frequency.WEEKLY:
@@ -186,22 +204,26 @@ def _compound(
     ends = period_ends(table.stamps, code)
     starts = np.flatnonzero(np.concatenate([[True], ends[1:] != ends[:-1]]))
     size = np.diff(np.append(starts, days))
-    held = ~np.isnan(table.values)
-    counts = np.add.reduceat(held, starts, axis=0, dtype=np.int64)
-    result = np.multiply.reduceat(np.where(held, 1.0 + table.values, 1.0), starts, axis=0) - 1.0
-    least = np.repeat(np.ceil(_LEAST_SHARE * size)[:, None], len(table.names), axis=1)
+    result = np.empty((len(starts), len(table.names)), order="F")
+    thin: dict[str, int] = {}
+    part: dict[str, int] = {}
     for position, name in enumerate(table.names):
-        if name in slow:
-            least[:, position] = 1
-        if roles[name] is Role.NON_TRADED:
-            result[:, position] = _last_values(table.values[:, position], starts, size)
-            least[:, position] = 1
-    thin = (counts > 0) & (counts < least)
-    part = (counts >= least) & (counts < size[:, None]) & (least > 1)
-    result[counts < least] = np.nan
+        x = table.values[:, position]
+        held = ~np.isnan(x)
+        counts = np.add.reduceat(held, starts, dtype=np.int64)
+        if roles[name] is Role.NON_TRADED or table.units.get(name) == PRICES:
+            within = days if name in table.slow or roles[name] is Role.NON_TRADED else 1 - _LEAST_SHARE
+            result[:, position], enough = _last_values(x, starts, size, within)
+        else:
+            result[:, position] = np.multiply.reduceat(np.where(held, 1.0 + x, 1.0), starts) - 1.0
+            enough = counts >= (1 if name in table.slow else np.ceil(_LEAST_SHARE * size))
+            if name not in table.slow and (enough & (counts < size)).any():
+                part[name] = int((enough & (counts < size)).sum())
+        result[~enough, position] = np.nan
+        if ((counts > 0) & ~enough).any():
+            thin[name] = int(((counts > 0) & ~enough).sum())
     last_rows = starts + size - 1
-    first_day = table.stamps[0]
-    table.values, table.stamps, table.rows = np.asfortranarray(result), ends[starts], table.rows[last_rows]
+    table.values, table.stamps, table.rows = result, ends[starts], table.rows[last_rows]
     record.merged(table.source, days - len(starts))
     record.add(
         EntryKind.FREQUENCY,
@@ -211,55 +233,48 @@ def _compound(
         source=table.source,
     )
     _say_thin(table, thin, part, target, record)
-    _drop_part_periods(table, size, first_day, code, source, target, record)
+    _drop_part_periods(table, size, source, target, record)
 
 
 def _last_values(
-    x: NDArray[np.float64], starts: NDArray[np.int64], size: NDArray[np.int64]
-) -> NDArray[np.float64]:
-    out = np.full(len(starts), np.nan)
-    for period, (start, count) in enumerate(zip(starts, size, strict=True)):
-        known = x[start : start + count]
-        known = known[~np.isnan(known)]
-        if len(known):
-            out[period] = known[-1]
-    return out
+    x: NDArray[np.float64], starts: NDArray[np.int64], size: NDArray[np.int64], within: float
+) -> tuple[NDArray[np.float64], NDArray[np.bool_]]:
+    """The last value of each period, and whether it stands among the last `within` (a share) of its rows."""
+    rows = np.arange(len(x))
+    last = np.maximum.reduceat(np.where(np.isnan(x), -1, rows), starts)
+    known = last >= starts
+    lag = starts + size - 1 - last
+    return np.where(known, x[np.maximum(last, 0)], np.nan), known & (lag <= np.floor(within * size))
 
 
 def _say_thin(
-    table: Table, thin: NDArray[np.bool_], part: NDArray[np.bool_], target: Frequency, record: RecordBuilder
+    table: Table, thin: Mapping[str, int], part: Mapping[str, int], target: Frequency, record: RecordBuilder
 ) -> None:
-    for mask, what, severity in (
-        (thin, f"no value in a {target.noun} with less than three quarters of its rows", Severity.WARNING),
+    for found, what, severity in (
+        (thin, f"no value for a {target.noun} with too few rows", Severity.WARNING),
         (part, f"a {target.noun} compounded over the rows that have a value", Severity.NOTE),
     ):
-        columns = np.flatnonzero(mask.any(axis=0))
-        if len(columns):
-            counts = [f"'{table.names[i]}' ({int(mask[:, i].sum())})" for i in columns]
+        if found:
+            counts = [f"'{name}' ({count})" for name, count in found.items()]
             record.add(
                 EntryKind.MISSING,
                 f"Not all rows have a value: {what}, in {listed(counts, quote='')}.",
                 severity,
-                series=[table.names[i] for i in columns],
-                rows=int(mask.sum()),
+                series=list(found),
+                rows=sum(found.values()),
                 source=table.source,
             )
 
 
 def _drop_part_periods(
-    table: Table,
-    size: NDArray[np.int64],
-    first_day: np.datetime64,
-    code: str,
-    source: Frequency,
-    target: Frequency,
-    record: RecordBuilder,
+    table: Table, size: NDArray[np.int64], source: Frequency, target: Frequency, record: RecordBuilder
 ) -> None:
-    """Drop a first or last period that the rows do not fill."""
+    """Drop a first or last period that the rows do not fill; a first one of prices is a good base all the same."""
+    priced = all(table.units.get(name) == PRICES for name in table.names)
     usual = float(np.median(size))
     keep = np.ones(len(size), dtype=bool)
     for edge in (0, -1):
-        if len(size) > 2 and size[edge] < _LEAST_SHARE * usual:
+        if len(size) > 2 and size[edge] < _LEAST_SHARE * usual and not (priced and edge == 0):
             keep[edge] = False
     for row in np.flatnonzero((size < _LEAST_SHARE * usual) & keep):
         record.add(

@@ -8,7 +8,7 @@ from typing import Any, TypeVar
 
 from soffit.errors import SettingError, nearest
 
-__all__ = ["Content", "Excess", "Frequency", "Role", "Units", "choice", "per_series"]
+__all__ = ["Content", "Excess", "Frequency", "Layout", "Mismatch", "Role", "Units", "choice", "per_series"]
 
 
 class Frequency(StrEnum):
@@ -60,6 +60,21 @@ class Excess(StrEnum):
     DETECT = "detect"
     ALREADY = "already excess"
     RAW = "raw"
+
+
+class Layout(StrEnum):
+    """How a table is laid out."""
+
+    DETECT = "detect"
+    WIDE = "wide"
+    LONG = "long"
+
+
+class Mismatch(StrEnum):
+    """What happens when series are declared in different currencies, or some gross and some net of fees."""
+
+    REFUSE = "refuse"
+    LABEL = "label"
 
 
 class Role(StrEnum):

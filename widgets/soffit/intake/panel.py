@@ -3,37 +3,20 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
+from soffit.intake.labels import SeriesLabel
 from soffit.intake.options import Frequency, Role
 from soffit.intake.record import IntakeRecord
 
 __all__ = ["Frequency", "Panel", "SeriesLabel", "fingerprint"]
 
 _DIGITS = 12
-
-
-@dataclass(frozen=True)
-class SeriesLabel:
-    """What a series is besides its numbers.
-
-    Parameters
-    ----------
-    currency : str
-        Currency code such as ``"USD"``; empty if not stated.
-    fees : str
-        ``"gross"`` or ``"net"`` of fees; empty if not stated.
-    source : str
-        Where the series came from.
-    """
-
-    currency: str = ""
-    fees: str = ""
-    source: str = ""
 
 
 @dataclass(frozen=True, eq=False)
@@ -85,10 +68,23 @@ class Panel:
         )
 
 
-def fingerprint(frequency: Frequency, dates: pd.DatetimeIndex, parts: Mapping[Role, pd.DataFrame]) -> str:
+def fingerprint(
+    frequency: Frequency,
+    dates: NDArray[np.datetime64],
+    parts: Mapping[Role, tuple[Sequence[str], NDArray[np.float64]]],
+) -> str:
     """SHA-256 over names, roles, dates and values.
 
     Values are rounded to 12 decimals first, so that the order in which a machine multiplies does not show.
+
+    Parameters
+    ----------
+    frequency : Frequency
+        Of the panel.
+    dates : ndarray of datetime64
+        T period ends.
+    parts : mapping of Role to (names, T×n values)
+        In the order of the roles.
 
     Returns
     -------
@@ -97,12 +93,12 @@ def fingerprint(frequency: Frequency, dates: pd.DatetimeIndex, parts: Mapping[Ro
     """
     digest = hashlib.sha256()
     digest.update(f"{frequency.value}\n".encode())
-    digest.update("\n".join(str(day) for day in dates.to_numpy().astype("datetime64[D]")).encode())
-    for role, frame in parts.items():
+    digest.update("\n".join(str(day) for day in dates.astype("datetime64[D]")).encode())
+    for role, (names, values) in parts.items():
         digest.update(f"\n[{role.value}]".encode())
-        for position, name in enumerate(frame.columns):
-            column = np.round(frame.iloc[:, position].to_numpy(dtype="<f8", na_value=np.nan), _DIGITS) + 0.0
+        for position, name in enumerate(names):
+            column = np.round(values[:, position], _DIGITS) + 0.0
             column[np.isnan(column)] = np.nan
-            digest.update(f"\n{len(str(name))}:{name}\n".encode())
+            digest.update(f"\n{len(name)}:{name}\n".encode())
             digest.update(column.astype("<f8").tobytes())
     return digest.hexdigest()

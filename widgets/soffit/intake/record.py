@@ -86,11 +86,14 @@ class IntakeRecord:
         One row a series: ``first``, ``last``, ``count``, ``gaps``, ``role``, ``unit``, ``source``.
     rows : DataFrame
         One row a source: ``in``, ``used``, ``dropped``, ``merged``; counts of data rows.
+    sources : DataFrame
+        One row a source: ``label`` (which download it is) and ``fingerprint`` (SHA-256 of its content).
     """
 
     entries: tuple[Entry, ...]
     coverage: pd.DataFrame
     rows: pd.DataFrame
+    sources: pd.DataFrame
 
     @property
     def table(self) -> pd.DataFrame:
@@ -127,6 +130,8 @@ class _Count:
     dropped: int = 0
     merged: int = 0
     used: int = 0
+    label: str = ""
+    fingerprint: str = ""
 
 
 @dataclass
@@ -150,9 +155,9 @@ class RecordBuilder:
         name = series if isinstance(series, str) else listed(series, quote="")
         self._entries.append(Entry(kind, name, int(rows), message, severity, source))
 
-    def rows_in(self, source: str, count: int) -> None:
+    def rows_in(self, source: str, count: int, label: str = "", fingerprint: str = "") -> None:
         """Open the account of a source with the data rows it holds."""
-        self._counts[source] = _Count(into=int(count))
+        self._counts[source] = _Count(into=int(count), label=label, fingerprint=fingerprint)
 
     def dropped(self, source: str, count: int) -> None:
         """Book rows that were left out."""
@@ -174,12 +179,12 @@ class RecordBuilder:
         RuntimeError
             If the rows of a source do not add up: a fault of soffit, not of the data.
         """
-        rows = pd.DataFrame(
-            [[c.into, c.used, c.dropped, c.merged] for c in self._counts.values()],
-            index=pd.Index(list(self._counts), name="source", dtype=object),
-            columns=["in", "used", "dropped", "merged"],
-        )
-        record = IntakeRecord(tuple(self._entries), coverage, rows)
+        index = pd.Index(list(self._counts), name="source", dtype=object)
+        counts = [[c.into, c.used, c.dropped, c.merged] for c in self._counts.values()]
+        rows = pd.DataFrame(counts, index=index, columns=["in", "used", "dropped", "merged"])
+        marks = [[c.label, c.fingerprint] for c in self._counts.values()]
+        sources = pd.DataFrame(marks, index=index, columns=["label", "fingerprint"], dtype=object)
+        record = IntakeRecord(tuple(self._entries), coverage, rows, sources)
         if not record.reconciles():
             raise RuntimeError(f"the intake lost count of its rows:\n{rows}")
         return record

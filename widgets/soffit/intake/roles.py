@@ -4,69 +4,100 @@ from __future__ import annotations
 
 import re
 import tomllib
-from collections.abc import Iterable, Mapping
+from collections.abc import Mapping, Sequence
+from difflib import get_close_matches
 from pathlib import Path
 from typing import Any
 
 from soffit.errors import InputError, nearest
-from soffit.intake.options import Role, choice
+from soffit.intake.options import Excess, Role, choice
+from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
+from soffit.intake.sources import RawTable
 
-__all__ = ["looks_like_factor", "looks_like_risk_free", "read_roles"]
+__all__ = ["read_mapping", "settle_roles"]
 
-_RISK_FREE = re.compile(r"rf|riskfree|riskfreerate|rfrate|tbill|tbill1m|1mtbill|rfree", re.ASCII)
-_FACTORS = {
-    "mktrf", "mkt", "market", "smb", "hml", "rmw", "cma", "mom", "umd", "wml", "hmlfx", "bab", "qmj", "hmldevil",
-    "strev", "ltrev",
-}  # fmt: skip
+_RISK_FREE = (
+    "rf",
+    "riskfree",
+    "riskfreerate",
+    "riskfreereturn",
+    "rfrate",
+    "tbill",
+    "tbill1m",
+    "1mtbill",
+    "rfree",
+)
+_FACTORS = (
+    "mktrf",
+    "mkt",
+    "market",
+    "smb",
+    "hml",
+    "rmw",
+    "cma",
+    "mom",
+    "umd",
+    "wml",
+    "bab",
+    "qmj",
+    "strev",
+    "ltrev",
+)
+_SECTIONS = ("roles", "labels")
+_FEW = 300
 
 
 def _bare(name: str) -> str:
     return re.sub(r"[^a-z0-9]", "", name.casefold())
 
 
-def looks_like_risk_free(name: str) -> bool:
-    """Whether a column's name says that it is the risk-free return."""
-    return _RISK_FREE.fullmatch(_bare(name)) is not None
-
-
-def looks_like_factor(name: str) -> bool:
-    """Whether a column has the published name of a traded factor, such as 'Mkt-RF' or 'SMB'."""
-    return _bare(name) in _FACTORS
-
-
-def read_roles(roles: Mapping[str, Any] | str | Path | None, known: Iterable[str]) -> dict[str, Role]:
-    """Roles by column name, from a mapping or a TOML file.
-
-    A mapping goes from names to roles, or from roles to lists of names; a file holds the same in a table
-    ``[roles]``.
-
-    Parameters
-    ----------
-    roles : mapping, path or None
-        What the analyst declared.
-    known : iterable of str
-        The columns there are.
+def read_mapping(
+    given: Mapping[str, Any] | str | Path | None,
+) -> tuple[Mapping[str, Any], Mapping[str, Any] | None]:
+    """Roles and labels as declared: a mapping of roles, or a TOML file with tables ``[roles]`` and ``[labels]``.
 
     Raises
     ------
     InputError
-        If the file cannot be read, or a name is not a column, with the nearest that is.
-    SettingError
-        If a role is not known.
+        If the file cannot be read, or holds something else.
     """
-    if roles is None:
-        return {}
-    if isinstance(roles, (str, Path)):
-        roles = _from_file(Path(roles))
+    if given is None:
+        return {}, None
+    if isinstance(given, Mapping):
+        return given, None
+    path = Path(given)
+    try:
+        content = tomllib.loads(path.read_text(encoding="utf-8-sig"))
+    except (OSError, UnicodeDecodeError) as error:
+        raise InputError(
+            f"The mapping file '{path}' cannot be read ({error})", remedy="check the path"
+        ) from error
+    except tomllib.TOMLDecodeError as error:
+        raise InputError(
+            f"The mapping file '{path}' is not TOML: {error}",
+            remedy="put names with blanks or dashes in quotes",
+        ) from error
+    for section, table in content.items():
+        if section not in _SECTIONS or not isinstance(table, Mapping):
+            raise InputError(
+                f"The mapping file '{path}' has '{section}'",
+                allowed="tables [roles] and [labels]",
+                remedy=nearest(section, _SECTIONS),
+            )
+    return content.get("roles", {}), content.get("labels")
+
+
+def _declared(roles: Mapping[str, Any], columns: Sequence[str]) -> dict[str, Role]:
+    """Roles by column, from names to roles or from roles to lists of names."""
     declared: dict[str, Role] = {}
-    columns = list(known)
+    known = set(columns)
     for key, value in roles.items():
         if isinstance(value, (list, tuple)):
             pairs = [(str(name), choice(Role, key, "role")) for name in value]
         else:
             pairs = [(str(key), choice(Role, value, f"roles[{key!r}]"))]
         for name, role in pairs:
-            if name not in columns:
+            if name not in known:
                 raise InputError(
                     f"A role is declared for '{name}', but no column has that name",
                     remedy=nearest(name, columns),
@@ -80,17 +111,131 @@ def read_roles(roles: Mapping[str, Any] | str | Path | None, known: Iterable[str
     return declared
 
 
-def _from_file(path: Path) -> Mapping[str, Any]:
-    try:
-        content = tomllib.loads(path.read_text(encoding="utf-8-sig"))
-    except (OSError, UnicodeDecodeError) as error:
-        raise InputError(f"The roles file '{path}' cannot be read ({error})") from error
-    except tomllib.TOMLDecodeError as error:
-        raise InputError(f"The roles file '{path}' is not TOML: {error}") from error
-    table = content.get("roles")
-    if not isinstance(table, Mapping):
-        raise InputError(
-            f"The roles file '{path}' has no table [roles]",
-            remedy='write [roles] and below it lines such as "SMB" = "traded factor"',
+def settle_roles(
+    raws: Sequence[RawTable],
+    roles: Mapping[str, Any],
+    risk_free: str | None,
+    raw_factors: Sequence[str],
+    excess: Excess,
+    record: RecordBuilder,
+) -> dict[str, Role]:
+    """The role of every column: declared, or by its source and its name, and said.
+
+    Parameters
+    ----------
+    raws : sequence of RawTable
+        Returns, then factors, then a risk-free Series, as far as they were given.
+    roles : mapping
+        What was declared.
+    risk_free : str, optional
+        The risk-free column, when it was named.
+    raw_factors : sequence of str
+        Factors from which the risk-free return is to be taken off.
+    excess : Excess
+        What was declared of the assets.
+    record : RecordBuilder
+        Where it is said.
+
+    Raises
+    ------
+    InputError
+        If roles contradict one another, or a risk-free return is needed and there is none.
+    """
+    columns = [name for raw in raws for name in raw.columns]
+    stated = _declared(roles, columns)
+    if risk_free is not None:
+        if stated.get(risk_free, Role.RISK_FREE) is not Role.RISK_FREE:
+            raise InputError(
+                f"'{risk_free}' is both the risk-free return and declared {stated[risk_free].value}",
+                remedy="keep one of the two",
+            )
+        stated[risk_free] = Role.RISK_FREE
+    kinds = _by_name(raws, stated, record)
+    _say_near_names(columns, stated, record)
+    ignored = [name for name, role in stated.items() if role is Role.IGNORED]
+    if ignored:
+        record.add(
+            EntryKind.ROLES, f"Left out as declared: {listed(ignored)}.", series=ignored, rows=len(ignored)
         )
-    return table
+    free = [name for name, role in kinds.items() if role is Role.RISK_FREE]
+    if len(free) > 1:
+        raise InputError(
+            f"{listed(free)} could all be the risk-free return",
+            remedy=f"say which with risk_free='{free[0]}'",
+        )
+    factors = [name for name, role in kinds.items() if role is Role.FACTOR]
+    for name in raw_factors:
+        if name not in factors:
+            raise InputError(
+                f"raw_factors names '{name}', which is no traded factor", remedy=nearest(name, factors)
+            )
+    if not free and (excess is Excess.RAW or raw_factors):
+        raise InputError(
+            "Returns are declared raw, but there is no risk-free return to take off",
+            remedy="name its column with risk_free='...', or give it as a Series",
+        )
+    return kinds
+
+
+def _by_name(raws: Sequence[RawTable], stated: Mapping[str, Role], record: RecordBuilder) -> dict[str, Role]:
+    kinds: dict[str, Role] = {}
+    suggested: list[str] = []
+    has_rate = Role.RISK_FREE in stated.values()
+    several = len(raws) > 1 and raws[1].slot == "factors"
+    for raw in raws:
+        for name in raw.columns:
+            rate = _bare(name) in _RISK_FREE
+            if name in stated:
+                kinds[name] = stated[name]
+            elif rate and not has_rate:
+                kinds[name] = Role.RISK_FREE
+                record.add(
+                    EntryKind.ROLES,
+                    f"'{name}' was taken as the risk-free return by its name.",
+                    series=name,
+                    source=raw.source,
+                )
+            elif rate:
+                kinds[name] = Role.IGNORED
+                record.add(
+                    EntryKind.ROLES,
+                    f"'{name}' has the name of a risk-free return, but another one was declared; it was left out.",
+                    Severity.WARNING,
+                    series=name,
+                    source=raw.source,
+                )
+            elif not several and _bare(name) in _FACTORS:
+                kinds[name] = Role.FACTOR
+                suggested.append(name)
+            else:
+                kinds[name] = Role.FACTOR if raw.slot == "factors" else Role.ASSET
+    if suggested:
+        record.add(
+            EntryKind.ROLES,
+            f"Taken as traded factors by their published names: {listed(suggested)}.",
+            series=suggested,
+            rows=len(suggested),
+        )
+    return kinds
+
+
+def _say_near_names(columns: Sequence[str], stated: Mapping[str, Role], record: RecordBuilder) -> None:
+    """Say so when a name is nearly that of the risk-free return."""
+    if (
+        len(columns) > _FEW
+        or Role.RISK_FREE in stated.values()
+        or any(_bare(name) in _RISK_FREE for name in columns)
+    ):
+        return
+    for name in columns:
+        bare = _bare(name)
+        near = name not in stated and (
+            get_close_matches(bare, _RISK_FREE[1:], n=1, cutoff=0.8) or bare in ("rfr", "rff", "r_f", "cash")
+        )
+        if near:
+            record.add(
+                EntryKind.ROLES,
+                f"'{name}' may be the risk-free return by its name; if so, say risk_free='{name}'.",
+                Severity.WARNING,
+                series=name,
+            )

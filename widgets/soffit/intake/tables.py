@@ -9,16 +9,19 @@ import numpy as np
 from numpy.typing import NDArray
 
 from soffit.errors import InputError
+from soffit.intake.cells import Column, Missing, detect_marks, is_numeric, read_numbers
 from soffit.intake.dates import read_dates
-from soffit.intake.numbers import Column, Marks, Missing, detect_marks, read_numbers
 from soffit.intake.options import Frequency, Role
 from soffit.intake.periods import month_text
-from soffit.intake.readers import RawTable
 from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
+from soffit.intake.sources import RawTable
 
-__all__ = ["Table", "clean_table", "merge_duplicates"]
+__all__ = ["PRICES", "Table", "clean_table", "merge_duplicates"]
 
 Floats = NDArray[np.float64]
+
+PRICES = "prices"
+"""The unit of a column of prices."""
 
 
 @dataclass(eq=False)
@@ -47,6 +50,8 @@ class Table:
         What was found or declared, by column.
     frequency : Frequency or None
         Set once it is known.
+    slow : dict of str to Frequency
+        Columns observed less often than the source.
     """
 
     source: str
@@ -59,6 +64,7 @@ class Table:
     signs: set[str] = field(default_factory=set)
     units: dict[str, str] = field(default_factory=dict)
     frequency: Frequency | None = None
+    slow: dict[str, Frequency] = field(default_factory=dict)
 
     def place(self, row: int) -> str:
         """Where the analyst finds a row, with its date."""
@@ -72,8 +78,29 @@ class Table:
         self.rows = self.rows[rows]
 
 
-def clean_table(raw: RawTable, roles: Mapping[str, Role], missing: Missing, record: RecordBuilder) -> Table:
+def clean_table(
+    raw: RawTable,
+    roles: Mapping[str, Role],
+    missing: Missing,
+    record: RecordBuilder,
+    step: Callable[[], object],
+) -> Table:
     """Dates and numbers of a raw table, sorted, with exact duplicates merged.
+
+    The raw table is used up: each of its columns is let go once it is read.
+
+    Parameters
+    ----------
+    raw : RawTable
+        From a reader.
+    roles : mapping of str to Role
+        Role of each column; ignored ones are not read.
+    missing : Missing
+        What stands for no value.
+    record : RecordBuilder
+        Where everything is said.
+    step : callable
+        Called after each column.
 
     Raises
     ------
@@ -83,34 +110,28 @@ def clean_table(raw: RawTable, roles: Mapping[str, Role], missing: Missing, reco
     dates = read_dates(raw.dates, raw.place, raw.date_format)
     for kind, message, severity in dates.notes:
         record.add(kind, message, severity, rows=len(raw.rows), source=raw.source)
-    names = [str(name) for name in raw.frame.columns if roles.get(str(name)) is not Role.IGNORED]
-    columns = _numbers(raw, names, missing)
-    _report_cells(columns, raw, record)
+    names = [name for name in raw.columns if roles[name] is not Role.IGNORED]
+    marks = raw.marks
+    if marks is None:
+        marks = detect_marks(raw.columns[name] for name in names if not is_numeric(raw.columns[name]))
     values = np.empty((len(raw.rows), len(names)), order="F")
+    told: dict[str, Column] = {}
     for position, name in enumerate(names):
-        values[:, position] = columns[name].values
-    table = Table(
-        raw.source,
-        names,
-        values,
-        dates.stamps,
-        raw.rows,
-        raw.row_word,
-        dates.told,
-        {name for name in names if columns[name].percent_signs},
-    )
+        column = read_numbers(raw.columns.pop(name), name, raw.place, marks, missing)
+        values[:, position] = column.values
+        if column.missing or column.repairs or column.percent_signs:
+            column.values = values[:0, 0]
+            told[name] = column
+        step()
+    _report_cells(told, raw.source, record)
+    signs = set(names) if raw.signs else {name for name, column in told.items() if column.percent_signs}
+    table = Table(raw.source, names, values, dates.stamps, raw.rows, raw.row_word, dates.told, signs)
     _sort(table, record)
     merge_duplicates(table, record, "date")
     return table
 
 
-def _numbers(raw: RawTable, names: list[str], missing: Missing) -> dict[str, Column]:
-    texts = [list(raw.frame[name]) for name in names if raw.frame[name].dtype.kind not in "fiu"]
-    marks = raw.marks if raw.marks is not None else detect_marks(texts) if texts else Marks()
-    return {name: read_numbers(raw.frame[name], name, raw.place, marks, missing) for name in names}
-
-
-def _report_cells(columns: Mapping[str, Column], raw: RawTable, record: RecordBuilder) -> None:
+def _report_cells(columns: Mapping[str, Column], source: str, record: RecordBuilder) -> None:
     """One entry for each missing code and each kind of repair."""
     by_code: dict[str, dict[str, int]] = {}
     by_repair: dict[str, dict[str, int]] = {}
@@ -127,7 +148,7 @@ def _report_cells(columns: Mapping[str, Column], raw: RawTable, record: RecordBu
             Severity.NOTE if code == "blank" else Severity.REPAIRED,
             series=list(counts),
             rows=sum(counts.values()),
-            source=raw.source,
+            source=source,
         )
     for repair, counts in by_repair.items():
         record.add(
@@ -136,7 +157,7 @@ def _report_cells(columns: Mapping[str, Column], raw: RawTable, record: RecordBu
             Severity.REPAIRED,
             series=list(counts),
             rows=sum(counts.values()),
-            source=raw.source,
+            source=source,
         )
 
 
@@ -201,6 +222,3 @@ def merge_duplicates(table: Table, record: RecordBuilder, what: str) -> None:
     keep = np.ones(len(table.stamps), dtype=bool)
     keep[again] = False
     table.take(keep)
-
-
-Place = Callable[[int], str]

@@ -10,9 +10,9 @@ from numpy.typing import NDArray
 from soffit.errors import InputError
 from soffit.intake.options import Content, Frequency, Role, Units
 from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
-from soffit.intake.tables import Table
+from soffit.intake.tables import PRICES, Table
 
-__all__ = ["apply_units", "prices_to_returns", "settle_content", "settle_units"]
+__all__ = ["apply_units", "mark_prices", "prices_to_returns", "settle_units"]
 
 Floats = NDArray[np.float64]
 
@@ -24,10 +24,10 @@ _SCALE = {Units.DECIMAL: 1.0, Units.PERCENT: 100.0, Units.BASIS_POINTS: 10_000.0
 _LEAST = 6
 
 
-def settle_content(
+def mark_prices(
     table: Table, declared: tuple[Content, Mapping[str, Content]], roles: Mapping[str, Role]
-) -> dict[str, Content]:
-    """Say which columns are prices.
+) -> None:
+    """Mark the columns that are prices; they become returns once all sources share a calendar.
 
     A column is taken for prices when all its values are positive, each is close to the one before, and their
     level is far above any return. What could be either is refused.
@@ -35,22 +35,31 @@ def settle_content(
     Raises
     ------
     InputError
-        If a column could be prices or returns.
+        If a column could be prices or returns, or a price is not positive.
     """
     default, named = declared
-    content: dict[str, Content] = {}
     for position, name in enumerate(table.names):
         told = named.get(name, default)
-        if roles[name] in (Role.NON_TRADED, Role.RISK_FREE):
-            told = Content.RETURNS
-        content[name] = _content(table, position) if told is Content.DETECT else told
-    return content
+        if roles[name] in (Role.NON_TRADED, Role.RISK_FREE) and name not in named:
+            continue
+        if (_content(table, position) if told is Content.DETECT else told) is not Content.PRICES:
+            continue
+        wrong = np.flatnonzero(table.values[:, position] <= 0)
+        if len(wrong):
+            raise InputError(
+                f"The price of '{name}' is {table.values[wrong[0], position]:g} in {table.place(int(wrong[0]))}",
+                allowed="prices above zero",
+                remedy="correct it, or leave the cell empty",
+            )
+        table.units[name] = PRICES
 
 
 def _content(table: Table, position: int) -> Content:
     x = table.values[:, position]
+    if bool((x <= 0).any()):
+        return Content.RETURNS
     x = x[~np.isnan(x)]
-    if len(x) < _LEAST or table.names[position] in table.signs or bool((x <= 0).any()):
+    if len(x) < _LEAST or table.names[position] in table.signs:
         return Content.RETURNS
     middle = float(np.median(x))
     steps = float(np.median(np.abs(np.diff(x)) / x[:-1]))
@@ -66,40 +75,47 @@ def _content(table: Table, position: int) -> Content:
     )
 
 
-def prices_to_returns(table: Table, content: Mapping[str, Content], record: RecordBuilder) -> None:
+def prices_to_returns(table: Table, consecutive: NDArray[np.bool_], record: RecordBuilder) -> None:
     """Turn price columns into simple returns; the first price is the base.
 
-    Raises
-    ------
-    InputError
-        If a price is not positive.
+    Parameters
+    ----------
+    table : Table
+        On its final calendar; changed in place.
+    consecutive : ndarray of bool
+        T-1; whether each period follows the one before without a gap.
+    record : RecordBuilder
+        Where it is said.
     """
-    priced = [i for i, name in enumerate(table.names) if content[name] is Content.PRICES]
+    priced = [position for position, name in enumerate(table.names) if table.units.get(name) == PRICES]
     if not priced:
         return
-    for i in priced:
-        wrong = np.flatnonzero(table.values[:, i] <= 0)
-        if len(wrong):
-            raise InputError(
-                f"The price of '{table.names[i]}' is {table.values[wrong[0], i]:g} in {table.place(int(wrong[0]))}",
-                allowed="prices above zero",
-                remedy="correct it, or leave the cell empty",
-            )
-        prices = table.values[:, i].copy()
-        table.values[0, i] = np.nan
-        table.values[1:, i] = prices[1:] / prices[:-1] - 1.0
-        table.units[table.names[i]] = "prices"
-    names = [table.names[i] for i in priced]
+    across = 0
+    for position in priced:
+        prices = table.values[:, position].copy()
+        held = ~np.isnan(prices)
+        table.values[0, position] = np.nan
+        table.values[1:, position] = np.where(consecutive, prices[1:] / prices[:-1] - 1.0, np.nan)
+        after = held[1:] & ~(held[:-1] & consecutive)
+        across += int(after[int(held.argmax()) :].sum())
+    names = [table.names[position] for position in priced]
     record.add(
         EntryKind.PRICES,
-        f"Read as prices and turned into simple returns: {listed(names)}. The first price is the "
-        "base, and no return "
-        "is made across a gap.",
+        f"Read as prices and turned into simple returns: {listed(names)}. The first price is the base.",
         Severity.REPAIRED,
         series=names,
         rows=len(names),
         source=table.source,
     )
+    if across:
+        record.add(
+            EntryKind.PRICES,
+            f"{across} prices follow a gap and so have no return.",
+            Severity.WARNING,
+            series=names,
+            rows=across,
+            source=table.source,
+        )
     if len(priced) == len(table.names):
         record.dropped(table.source, 1)
         record.add(
@@ -132,7 +148,7 @@ def settle_units(
         told = named.get(name, default)
         if roles[name] is Role.NON_TRADED and told is Units.DETECT:
             continue
-        if table.units.get(name) == "prices":
+        if table.units.get(name) == PRICES:
             found[name] = Units.DECIMAL
         elif told is not Units.DETECT:
             found[name] = told
@@ -174,7 +190,7 @@ def _unit(table: Table, position: int, role: Role) -> Units | None:
 
 
 def _neighbours(table: Table, found: dict[str, Units], unclear: list[str], record: RecordBuilder) -> None:
-    told = {unit for name, unit in found.items() if table.units.get(name) != "prices"}
+    told = {unit for name, unit in found.items() if table.units.get(name) != PRICES}
     if not unclear:
         return
     if len(told) == 1:
@@ -207,7 +223,7 @@ def _say_units(
     declared: tuple[Units, Mapping[str, Units]],
     record: RecordBuilder,
 ) -> None:
-    returns = {name: unit for name, unit in found.items() if table.units.get(name) != "prices"}
+    returns = {name: unit for name, unit in found.items() if table.units.get(name) != PRICES}
     several = len(set(returns.values())) > 1
     for unit in dict.fromkeys(returns.values()):
         names = [name for name, one in returns.items() if one is unit]
@@ -237,5 +253,5 @@ def apply_units(table: Table, found: Mapping[str, Units]) -> None:
         unit = found.get(name)
         if unit is not None:
             table.units.setdefault(name, unit.value)
-            if table.units[name] != "prices" and unit is not Units.DECIMAL:
+            if table.units[name] != PRICES and unit is not Units.DECIMAL:
                 table.values[:, position] /= _SCALE[unit]

@@ -13,7 +13,16 @@ from numpy.typing import NDArray
 
 from soffit.errors import InputError
 
-__all__ = ["MISSING_CODES", "MISSING_TEXTS", "Column", "Marks", "Missing", "detect_marks", "read_numbers"]
+__all__ = [
+    "MISSING_CODES",
+    "MISSING_TEXTS",
+    "Column",
+    "Marks",
+    "Missing",
+    "detect_marks",
+    "is_numeric",
+    "read_numbers",
+]
 
 MISSING_CODES = (-99.99, -999.0, -999.99, -9999.0)
 """Numbers that providers write where there is no value."""
@@ -128,24 +137,7 @@ def read_numbers(
     InputError
         If a cell is neither a number nor a known missing code, or is infinite.
     """
-    series = pd.Series(cells)
-    if pd.api.types.is_bool_dtype(series.dtype):
-        raise InputError(
-            f"Column '{name}' holds True and False, not numbers",
-            remedy=f"give it the role 'ignored': roles={{'{name}': 'ignored'}}",
-        )
-    if pd.api.types.is_complex_dtype(series.dtype) or pd.api.types.is_datetime64_any_dtype(series.dtype):
-        raise InputError(
-            f"Column '{name}' holds {series.dtype}, not numbers",
-            remedy=f"give it the role 'ignored': roles={{'{name}': 'ignored'}}",
-        )
-    if pd.api.types.is_numeric_dtype(series.dtype):
-        column = Column(series.to_numpy(dtype=float, na_value=np.nan, copy=True))
-        blank = int(np.isnan(column.values).sum())
-        if blank:
-            column.missing["blank"] = blank
-    else:
-        column = _read_text(series.to_numpy(dtype=object), name, place, marks, missing)
+    column = _from_floats(cells) if is_numeric(cells) else _from_cells(cells, name, place, marks, missing)
     infinite = np.flatnonzero(np.isinf(column.values))
     if len(infinite):
         raise InputError(
@@ -158,6 +150,48 @@ def read_numbers(
             column.missing[f"{code:g}"] = column.missing.get(f"{code:g}", 0) + int(hits.sum())
             column.values[hits] = np.nan
     return column
+
+
+def is_numeric(cells: Any) -> bool:
+    """Whether a column holds numbers already, and no text."""
+    return getattr(getattr(cells, "dtype", None), "kind", "O") in "fiu"
+
+
+def _from_floats(cells: Any) -> Column:
+    if isinstance(cells, np.ndarray):
+        column = Column(np.array(cells, dtype=float))
+    else:
+        column = Column(pd.Series(cells).to_numpy(dtype=float, na_value=np.nan, copy=True))
+    blank = int(np.isnan(column.values).sum())
+    if blank:
+        column.missing["blank"] = blank
+    return column
+
+
+def _from_cells(cells: Any, name: str, place: Callable[[int], str], marks: Marks, missing: Missing) -> Column:
+    if getattr(getattr(cells, "dtype", None), "kind", "O") in "bcmM":
+        raise InputError(
+            f"Column '{name}' holds {cells.dtype}, not numbers",
+            remedy=f"give it the role 'ignored': roles={{'{name}': 'ignored'}}",
+        )
+    items: NDArray[np.object_] = np.asarray(cells, dtype=object)
+    if marks.decimal == "." and len(items) and all(type(item) is str for item in items):
+        plain = _all_plain(list(items))
+        if plain is not None:
+            return Column(plain)
+    return _read_text(items, name, place, marks, missing)
+
+
+def _all_plain(texts: list[str]) -> NDArray[np.float64] | None:
+    """All texts as numbers when every one is a plain number; the common case, and quick."""
+    joined = "".join(texts)
+    if not joined.isascii() or "_" in joined:
+        return None
+    try:
+        values = np.array([float(text) for text in texts])
+    except ValueError:
+        return None
+    return values if bool(np.isfinite(values).all()) else None
 
 
 def _read_text(

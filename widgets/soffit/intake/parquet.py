@@ -1,0 +1,90 @@
+"""Parquet files, read a few columns at a time so that memory stays close to the size of the data."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from soffit.errors import InputError, nearest
+from soffit.intake.record import EntryKind
+from soffit.intake.sources import DATE_NAMES, Limits, RawTable, Source, check_cells, clean_names, need_extra
+
+__all__ = ["read_parquet"]
+
+_AT_ONCE = 256
+
+
+def read_parquet(path: Path, name: str, source: Source, limits: Limits) -> RawTable:
+    """Read a Parquet file.
+
+    Raises
+    ------
+    InputError
+        If pyarrow is missing, the file is not Parquet, or there are no dates or columns.
+    """
+    try:
+        import pyarrow as pa
+        import pyarrow.parquet as pq
+    except ImportError as error:
+        raise need_extra("pyarrow", "Reading Parquet", error) from error
+    try:
+        file = pq.ParquetFile(path)
+    except (pa.ArrowException, OSError) as error:
+        raise InputError(
+            f"'{path.name}' cannot be read as Parquet ({error})", remedy="write it again"
+        ) from error
+    with file:
+        schema = file.schema_arrow
+        rows = int(file.metadata.num_rows)
+        check_cells(rows, len(schema.names), name, limits)
+        if rows == 0:
+            raise InputError(f"{name} has no rows", remedy="check how it was made")
+        dated, remark = _date_column(schema, name, source)
+        kept = [position for position in range(len(schema.names)) if position != dated]
+        labels, _ = clean_names([schema.names[position] for position in kept], name)
+        if not labels:
+            raise InputError(f"{name} has dates but no columns of numbers", remedy="check how it was made")
+        columns: dict[str, Any] = {}
+        for start in range(0, len(kept), _AT_ONCE):
+            part = file.read(columns=[schema.names[position] for position in kept[start : start + _AT_ONCE]])
+            for offset, label in enumerate(labels[start : start + _AT_ONCE]):
+                columns[label] = _cells(part.column(offset))
+        dates = _cells(file.read(columns=[schema.names[dated]]).column(0))
+    table = RawTable(name, columns, dates, np.arange(1, rows + 1, dtype=np.int64), "row", rows_in=rows)
+    if remark:
+        table.note(EntryKind.DATES, remark)
+    return table
+
+
+def _cells(column: Any) -> Any:
+    """An array of its own, so that the file's buffers can go."""
+    cells = column.to_pandas()
+    if isinstance(cells.dtype, np.dtype) and cells.dtype.kind in "fiu":
+        return np.array(cells, dtype=float)
+    return cells.array
+
+
+def _date_column(schema: Any, name: str, source: Source) -> tuple[int, str]:
+    """Position of the dates, and what to say about it."""
+    import pyarrow.types as types
+
+    names = list(schema.names)
+    if source.date is not None:
+        if source.date not in names:
+            raise InputError(f"{name} has no date column '{source.date}'", remedy=nearest(source.date, names))
+        return names.index(source.date), ""
+    content = json.loads((schema.metadata or {}).get(b"pandas", b"{}"))
+    index = [item for item in content.get("index_columns", []) if isinstance(item, str) and item in names]
+    if len(index) > 1:
+        raise InputError(f"{name} has an index of several levels", remedy="put the dates alone in the index")
+    typed = [i for i, one in enumerate(schema.types) if types.is_timestamp(one) or types.is_date(one)]
+    named = [i for i, label in enumerate(names) if label.casefold() in DATE_NAMES]
+    if index and (names.index(index[0]) in typed or not typed + named):
+        return names.index(index[0]), ""
+    position = next(iter(typed + named), None)
+    if position is None:
+        raise InputError(f"{name} has no column of dates", remedy="name it with Source(path, date='...')")
+    return position, f"The dates were taken from column '{names[position]}'."
