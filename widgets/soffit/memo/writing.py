@@ -1,0 +1,103 @@
+"""Write a pack into a folder, in the formats a desk asks for."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Mapping
+from enum import StrEnum
+from importlib import import_module
+from pathlib import Path
+
+from soffit.errors import InputError, SettingError, nearest
+from soffit.memo.layout import Memo
+from soffit.memo.pack import Pack
+
+__all__ = ["Format", "write"]
+
+
+class Format(StrEnum):
+    """What a pack can be written as."""
+
+    HTML = "html"
+    PNG = "png"
+    SVG = "svg"
+    PDF_FIGURES = "pdf figures"
+
+
+def _text(name: str, module: str, function: str) -> Callable[[Memo], Mapping[str, bytes]]:
+    def one(memo: Memo) -> Mapping[str, bytes]:
+        made = getattr(import_module(module), function)(memo)
+        return {name: made.encode("utf-8") if isinstance(made, str) else made}
+
+    return one
+
+
+def _many(module: str, function: str) -> Callable[[Memo], Mapping[str, bytes]]:
+    def several(memo: Memo) -> Mapping[str, bytes]:
+        made: Mapping[str, bytes] = getattr(import_module(module), function)(memo)
+        return made
+
+    return several
+
+
+# Writers are imported when they are asked for: Word, Excel and the rest are an extra.
+_WRITERS: dict[Format, Callable[[Memo], Mapping[str, bytes]]] = {
+    Format.HTML: _text("memo.html", "soffit.memo.html", "html"),
+    Format.PNG: _many("soffit.memo.images", "png_files"),
+    Format.SVG: _many("soffit.memo.images", "svg_files"),
+    Format.PDF_FIGURES: _many("soffit.memo.images", "pdf_files"),
+}
+
+
+def write(
+    pack: Pack, directory: str | Path, formats: Iterable[Format | str] = (Format.HTML, Format.PNG)
+) -> list[Path]:
+    """Write a pack.
+
+    Parameters
+    ----------
+    pack : Pack
+        What was kept.
+    directory : path
+        Folder; made if it is not there. Files of the same names are replaced.
+    formats : iterable of Format or str
+        What to write.
+
+    Returns
+    -------
+    list of Path
+        The files written, in the order of the formats.
+
+    Raises
+    ------
+    SettingError
+        For an unknown format.
+    InputError
+        If nothing was kept, the folder cannot be written, or a format's library is not installed.
+    """
+    chosen = list(dict.fromkeys(_format(name) for name in formats))
+    memo, folder = pack.lay_out(), Path(directory)
+    files: dict[str, bytes] = {}
+    for form in chosen:
+        try:
+            files.update(_WRITERS[form](memo))
+        except ModuleNotFoundError as error:
+            raise InputError(
+                f"'{form}' needs the package {error.name}", remedy='pip install "soffit[memo]"'
+            ) from error
+    return [_save(folder / name, data) for name, data in files.items()]
+
+
+def _format(name: Format | str) -> Format:
+    try:
+        return Format(name)
+    except ValueError as error:
+        raise SettingError(f"There is no format '{name}'", remedy=nearest(str(name), list(Format))) from error
+
+
+def _save(path: Path, data: bytes) -> Path:
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        path.write_bytes(data)
+    except OSError as error:
+        raise InputError(f"The file '{path}' cannot be written ({error})") from error
+    return path
