@@ -6,6 +6,7 @@ import numpy as np
 import pandas as pd
 import pytest
 import statsmodels.api as sm
+from tests.universes import INDUSTRIES
 
 from soffit.errors import EstimationError
 from soffit.estimate.regression import ErrorChoice
@@ -13,7 +14,6 @@ from soffit.hedge.delivery import report_walk
 from soffit.hedge.walk_forward import WalkForward, WalkSchedule, walk_forward
 from soffit.hedge.weights import HedgeRule
 from soffit.settings import ErrorType, HedgeBeta, LagRule
-from tests.universes import INDUSTRIES
 
 FACTORS = ["MktRF", "SMB", "HML", "Mom"]
 
@@ -91,7 +91,9 @@ def test_industries_deliver_less_than_they_promise(walk: WalkForward) -> None:
 
 
 @pytest.mark.parametrize(
-    "rule", [HedgeRule(), HedgeRule(beta=HedgeBeta.VASICEK), HedgeRule(leg_cap=0.6)], ids=["plain", "Vasicek", "cap"]
+    "rule",
+    [HedgeRule(), HedgeRule(beta=HedgeBeta.VASICEK), HedgeRule(leg_cap=0.6)],
+    ids=["plain", "Vasicek", "cap"],
 )
 @pytest.mark.parametrize("hold", [1, 12])
 def test_the_parts_of_the_gap_add_up(
@@ -120,7 +122,9 @@ def test_drift_is_nothing_when_betas_are_constant_and_found_when_they_wander(wan
         assert abs(gap.residual_risk.mean()) < 4 * gap.residual_risk.std() / np.sqrt(N)
         # The prediction variance accounts for the whole gap.
         whole = gap.delivered - gap.promised
-        assert gap.estimation.mean() == pytest.approx(whole.mean(), abs=4 * (whole - gap.estimation).std() / np.sqrt(N))
+        assert gap.estimation.mean() == pytest.approx(
+            whole.mean(), abs=4 * (whole - gap.estimation).std() / np.sqrt(N)
+        )
         # And its standard error is of the right size.
         assert gap.drift_error.mean() == pytest.approx(gap.drift.std(), rel=0.3)
     else:

@@ -7,12 +7,12 @@ import itertools
 import numpy as np
 import pandas as pd
 import pytest
+from tests.universes import INDUSTRIES
 
 from soffit.errors import EstimationError, SettingError
 from soffit.hedge.walk_forward import WalkSchedule, walk_forward
 from soffit.hedge.weights import HedgeRule, hedge_ratios
 from soffit.settings import HedgeBeta, WindowKind
-from tests.universes import INDUSTRIES
 
 FACTORS = ["MktRF", "SMB", "HML", "Mom"]
 
@@ -127,7 +127,9 @@ def test_a_lag_hedges_with_older_windows(french: pd.DataFrame) -> None:
     np.testing.assert_array_equal(late.rows, prompt.rows[3:])
 
 
-def test_one_expanding_window_over_all_but_the_last_period_is_the_full_regression(french: pd.DataFrame) -> None:
+def test_one_expanding_window_over_all_but_the_last_period_is_the_full_regression(
+    french: pd.DataFrame,
+) -> None:
     returns, factors, _ = _french(french, "1995", "2003", INDUSTRIES[:3])
     walk = walk_forward(returns, factors, None, WalkSchedule(WindowKind.EXPANDING, window=len(returns) - 1))
     once = hedge_ratios(returns[:-1], factors[:-1])
@@ -170,7 +172,9 @@ def test_spanned_asset_promises_and_delivers_nothing_but_alpha() -> None:
 def test_bad_input_is_refused_with_the_reason() -> None:
     rng = np.random.default_rng(4)
     returns, factors = rng.normal(0, 0.03, (80, 2)), rng.normal(0, 0.03, (80, 2))
-    with pytest.raises(EstimationError, match=r"window of 3 periods is too short for 2 hedge legs.*at least 4"):
+    with pytest.raises(
+        EstimationError, match=r"window of 3 periods is too short for 2 hedge legs.*at least 4"
+    ):
         walk_forward(returns, factors, None, WalkSchedule(window=3))
     with pytest.raises(EstimationError, match=r"with 2 Dimson lags.*at least 10"):
         walk_forward(

@@ -11,13 +11,13 @@ import statsmodels.api as sm
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy import optimize
+from tests.universes import INDUSTRIES
 
 from soffit.errors import EstimationError, SettingError
 from soffit.estimate.regression import regress
 from soffit.hedge.quadratic import nearest_within, select_legs
 from soffit.hedge.weights import HedgeRule, hedge_ratios, mimicking_portfolios
 from soffit.settings import HedgeBeta
-from tests.universes import INDUSTRIES
 
 FACTORS = ["MktRF", "SMB", "HML", "Mom"]
 
@@ -259,6 +259,13 @@ def test_gross_cap_against_sequential_quadratic_programming(french: pd.DataFrame
         mine = ((own - centred @ hedge.ratios[i]) ** 2).sum() * 100
         assert mine <= ssr(best) + 1e-9
     assert hedge.gross.max() <= 0.9 + 1e-9
+
+
+def test_caps_that_bind_together_are_solved() -> None:
+    # Two legs at 0.5 use up a gross cap of 1: no leg is free to set the price of gross exposure.
+    metric = np.array([[2.0, 0.3, 0.1], [0.3, 1.0, 0.2], [0.1, 0.2, 1.0]])
+    found, _ = nearest_within(np.array([[[2.0, -1.5, 0.1]]]), metric[None], np.array(0.5), 1.0)
+    np.testing.assert_allclose(found[0, 0], [0.5, -0.5, 0.0], atol=1e-15)
 
 
 def test_nearly_collinear_legs_under_a_cap_are_still_solved() -> None:

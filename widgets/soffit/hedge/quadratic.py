@@ -21,7 +21,7 @@ Bools = npt.NDArray[np.bool_]
 
 _ENUMERATED = 8  # up to this many legs every subset is tried
 _STEPS = 2_000
-_TOLERANCE = 1e-13
+_TOLERANCE = 1e-12
 _BATCH = 50_000  # problems solved together, to bound memory
 
 
@@ -177,8 +177,8 @@ def nearest_within(
 
     Notes
     -----
-    Accelerated projected gradient (Beck and Teboulle 2009) with restarts, the projection exact; rows that it leaves
-    unsolved, for nearly collinear legs, go to SLSQP one by one.
+    Accelerated projected gradient (Beck and Teboulle 2009) finds which limits bind; the optimality conditions are
+    then solved exactly and checked. Rows that this leaves, for nearly collinear legs, go to SLSQP one by one.
     """
     bounds = np.broadcast_to(bounds, target.shape)
     limit = np.inf if gross is None else float(gross)
@@ -195,13 +195,11 @@ def nearest_within(
 
 def _solve(target: Floats, metric: Floats, bounds: Floats, limit: float) -> Floats:
     """Solve M problems of K unknowns: `target` and `bounds` (M, K), `metric` (M, K, K)."""
-    top = np.linalg.eigvalsh(metric)[:, -1]
-    scaled = metric / top[:, None, None]
+    scaled = metric / np.linalg.eigvalsh(metric)[:, -1][:, None, None]
     point = _project(target, bounds, limit)
-    ahead, momentum = point, np.ones(len(target))
-    size = np.maximum(np.abs(target).max(axis=1), 1e-300)
+    ahead, momentum = point.copy(), np.ones(len(target))
     unsolved = np.ones(len(target), dtype=bool)
-    for _ in range(_STEPS):
+    for step in range(1, _STEPS + 1):
         live = np.flatnonzero(unsolved)
         if not len(live):
             return point
@@ -209,16 +207,60 @@ def _solve(target: Floats, metric: Floats, bounds: Floats, limit: float) -> Floa
         slope = np.einsum("mij,mj->mi", scaled[live], at - target[live])
         new = _project(at - slope, bounds[live], limit)
         # Restart where the momentum points uphill (O'Donoghue and Candès 2015).
-        weight = momentum[live]
-        weight = np.where(((at - new) * (new - old)).sum(axis=1) > 0, 1.0, weight)
+        weight = np.where(((at - new) * (new - old)).sum(axis=1) > 0, 1.0, momentum[live])
         following = 0.5 * (1.0 + np.sqrt(1.0 + 4.0 * weight**2))
         ahead[live] = new + ((weight - 1.0) / following)[:, None] * (new - old)
-        momentum[live] = following
-        point[live] = new
-        unsolved[live] = np.abs(new - at).max(axis=1) > _TOLERANCE * size[live]
+        momentum[live], point[live] = following, new
+        if step & (step - 1) == 0:  # at powers of two
+            exact, right = _finish(new, target[live], scaled[live], bounds[live], limit)
+            point[live[right]] = exact[right]
+            unsolved[live[right]] = False
     for row in np.flatnonzero(unsolved):
         point[row] = _slsqp(target[row], scaled[row], bounds[row], limit, point[row])
     return point
+
+
+def _finish(
+    point: Floats, target: Floats, metric: Floats, bounds: Floats, limit: float
+) -> tuple[Floats, Bools]:
+    """Solve the optimality conditions for the limits that bind at `point`; say where that is the solution."""
+    sign, size = np.sign(point), np.abs(point)
+    capped = size >= bounds
+    free = (sign != 0) & ~capped
+    tight = np.zeros(len(point), dtype=bool)
+    if np.isfinite(limit):
+        tight = np.abs(size.sum(axis=1) - limit) <= _TOLERANCE * max(limit, 1.0)
+    fixed = np.where(capped, sign * np.where(np.isfinite(bounds), bounds, 0.0), 0.0)
+    count, width = point.shape
+    # Unknowns: the ratios, and the price of gross exposure.
+    left, right = np.zeros((count, width + 1, width + 1)), np.zeros((count, width + 1))
+    left[:, :width, :width] = np.where(free[:, :, None], metric, np.eye(width))
+    left[:, :width, width] = np.where(free, sign, 0.0)
+    priced = tight & free.any(axis=1)
+    left[:, width, :width] = np.where(priced[:, None] & free, sign, 0.0)
+    left[:, width, width] = np.where(priced, 0.0, 1.0)
+    wanted = np.einsum("mij,mj->mi", metric, target)
+    right[:, :width] = np.where(free, wanted, fixed)
+    right[:, width] = np.where(
+        priced, (limit if np.isfinite(limit) else 0.0) - np.abs(fixed).sum(axis=1), 0.0
+    )
+    try:
+        found = np.linalg.solve(left, right[:, :, None])[:, :, 0]
+    except np.linalg.LinAlgError:
+        return point, np.zeros(count, dtype=bool)
+    ratios, price = found[:, :width], found[:, width]
+    slack = _TOLERANCE * np.maximum(np.abs(target).max(axis=1), 1e-300)[:, None]
+    pull = wanted - np.einsum("mij,mj->mi", metric, ratios)
+    # Where every held leg is at its own cap, any price between the pulls at zero and those at the caps will do.
+    idle = (sign == 0) & (bounds > 0)
+    price = np.where(tight & ~priced, np.where(idle, np.abs(pull), 0.0).max(axis=1), price)
+    kept = np.where(free, (ratios * sign > 0) & (np.abs(ratios) <= bounds + slack), True)
+    at_cap = np.where(capped & (sign != 0), pull * sign >= price[:, None] - slack, True)
+    at_zero = np.where(idle, np.abs(pull) <= price[:, None] + slack, True)
+    within = np.abs(ratios).sum(axis=1) <= limit * (1.0 + _TOLERANCE)
+    return ratios, np.asarray(
+        (kept & at_cap & at_zero).all(axis=1) & within & (price >= -slack[:, 0]), dtype=bool
+    )
 
 
 def _project(values: Floats, bounds: Floats, limit: float) -> Floats:
