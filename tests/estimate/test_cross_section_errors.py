@@ -9,9 +9,15 @@ from scipy import stats
 
 from soffit.errors import EstimationError
 from soffit.estimate.cross_section import PremiumError, two_pass
-from soffit.estimate.cross_section_errors import fama_macbeth_covariance, premium_tests, wald_test
+from soffit.estimate.cross_section_errors import (
+    fama_macbeth_covariance,
+    premium_lags,
+    premium_tests,
+    wald_test,
+)
+from soffit.estimate.hac import newey_west_bandwidth
 from soffit.estimate.statistic import NotApplicable
-from soffit.settings import Reference, SecondPass
+from soffit.settings import LagRule, Reference, SecondPass
 
 
 def weighted_premia(
@@ -120,6 +126,21 @@ def test_t_ratios_of_the_gap_have_the_right_size() -> None:
         got = two_pass(F @ B + draw.normal(size=(200, 8)), F)
         beyond += got.gap_tests(PremiumError.SHANKEN)[0].pvalue < 0.05
     assert abs(beyond / draws - 0.05) < 3.5 * np.sqrt(0.05 * 0.95 / draws)
+
+
+def test_lag_rules_of_mean_slopes() -> None:
+    draw = np.random.default_rng(5)
+    slopes = np.zeros((300, 3))
+    for t in range(1, 300):
+        slopes[t] = 0.8 * slopes[t - 1] + draw.normal(size=3)
+    assert premium_lags(slopes, 7, True) == 7
+    assert premium_lags(slopes, LagRule.RULE_OF_THUMB, True) == 5  # floor(4 * 3^(2/9))
+    automatic = premium_lags(slopes, LagRule.AUTOMATIC, True)
+    centred = slopes[:, 1:] - slopes[:, 1:].mean(axis=0)
+    assert automatic == np.floor(newey_west_bandwidth(centred / centred.std(axis=0))) > 5
+    assert premium_lags(slopes * np.array([1.0, 1e6, 1e-6]), LagRule.AUTOMATIC, True) == automatic
+    with pytest.raises(EstimationError, match="Newey-West lags"):
+        premium_lags(slopes, 300, True)
 
 
 def test_wald_test_against_scipy() -> None:

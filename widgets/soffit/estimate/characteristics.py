@@ -17,11 +17,11 @@ from soffit.estimate.cross_section_errors import (
     PremiumError,
     fama_macbeth_covariance,
     newey_west_covariance,
+    premium_lags,
     premium_tests,
 )
-from soffit.estimate.hac import rule_of_thumb_lags
 from soffit.estimate.statistic import NotApplicable, TestStatistic
-from soffit.settings import Reference
+from soffit.settings import LagRule, Reference
 
 __all__ = ["CharacteristicPremia", "SkippedPeriod", "characteristic_premia"]
 
@@ -111,7 +111,7 @@ def characteristic_premia(
     *,
     constant: bool = True,
     weights: Floats | None = None,
-    lags: int | None = None,
+    lags: int | LagRule = LagRule.RULE_OF_THUMB,
     names: Sequence[str] = (),
 ) -> CharacteristicPremia:
     """Regress returns on characteristics in each period and average the slopes.
@@ -128,8 +128,8 @@ def characteristic_premia(
         Whether each cross-section has a constant.
     weights : ndarray, shape (M,), optional
         Positive weights of a WLS cross-section.
-    lags : int, optional
-        Newey-West lags; ``floor(4 (S/100)^(2/9))`` if None.
+    lags : int or LagRule
+        Newey-West lags, or the rule that chooses them.
     names : sequence of str
         Names of the characteristics, for messages.
 
@@ -187,7 +187,7 @@ def characteristic_premia(
         average_r2=r2,
         skipped=tuple(sorted(skipped, key=lambda s: s.period)),
         incomplete=int((~whole).sum()),
-        lags=rule_of_thumb_lags(len(slopes)) if lags is None else lags,
+        lags=premium_lags(slopes, lags, constant),
     )
 
 

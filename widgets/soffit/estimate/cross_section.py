@@ -18,13 +18,13 @@ from soffit.estimate.cross_section_errors import (
     PremiumError,
     fama_macbeth_covariance,
     newey_west_covariance,
+    premium_lags,
     premium_tests,
     robust_influence,
     shanken_covariance,
     wald_test,
 )
 from soffit.estimate.cross_section_fit import cross_sectional_r2, pricing_error_tests
-from soffit.estimate.hac import rule_of_thumb_lags
 from soffit.estimate.regression import Regression, regress
 from soffit.estimate.rolling import rolling_betas
 from soffit.estimate.second_pass import (
@@ -36,7 +36,7 @@ from soffit.estimate.second_pass import (
     returns_root,
 )
 from soffit.estimate.statistic import NotApplicable, TestStatistic
-from soffit.settings import Reference, SecondPass
+from soffit.settings import LagRule, Reference, SecondPass
 
 __all__ = ["PremiumError", "TwoPass", "two_pass"]
 
@@ -180,7 +180,7 @@ def two_pass(
     second_pass: SecondPass = SecondPass.OLS,
     constant: bool = True,
     window: int | None = None,
-    lags: int | None = None,
+    lags: int | LagRule = LagRule.RULE_OF_THUMB,
     names: Sequence[str] = (),
 ) -> TwoPass:
     """Estimate prices of risk in two passes: betas over time, then a cross-section each period.
@@ -199,8 +199,8 @@ def two_pass(
     window : int, optional
         Periods of a rolling beta window, which ends in the period before the one it prices. Full-sample betas
         if None.
-    lags : int, optional
-        Newey-West lags; ``floor(4 (S/100)^(2/9))`` if None.
+    lags : int or LagRule
+        Newey-West lags, or the rule that chooses them.
     names : sequence of str
         Factor names, for messages.
 
@@ -230,7 +230,7 @@ def _full_sample(
     factors: Floats,
     second_pass: SecondPass,
     constant: bool,
-    lags: int | None,
+    lags: int | LagRule,
     names: Sequence[str],
 ) -> TwoPass:
     T = len(returns)
@@ -239,7 +239,7 @@ def _full_sample(
     centred = returns - mean
     root = returns_root(centred)
     parts = _parts(returns, factors, first_pass, second_pass, constant, root, names)
-    lags = rule_of_thumb_lags(T) if lags is None else lags
+    lags = premium_lags(parts.slopes, lags, constant)
     influence = robust_influence(parts)
     residual_part, k = parts.residual_part, int(constant)
     gap_series = parts.slopes[:, k:] - factors
@@ -335,7 +335,7 @@ def _rolling(
     second_pass: SecondPass,
     constant: bool,
     window: int,
-    lags: int | None,
+    lags: int | LagRule,
     names: Sequence[str],
 ) -> TwoPass:
     T = len(returns)
@@ -348,7 +348,7 @@ def _rolling(
     # The last period prices but enters no window: nothing comes after it.
     first_pass = rolling_betas(returns[:-1], factors[:-1], window, names=names)
     priced, faced = returns[window:], factors[window:]
-    S, k = len(priced), int(constant)
+    k = int(constant)
     design = design_of(first_pass.beta, constant)
     if second_pass is SecondPass.GLS:
         projection = _rolling_gls(returns, design, constant, window, names)
@@ -357,7 +357,7 @@ def _rolling(
         projection = project(design, constant, names, weights=weights)[0]
     slopes = np.einsum("spn,sn->sp", projection, priced)
     errors = priced - np.einsum("snp,sp->sn", design, slopes)
-    lags = rule_of_thumb_lags(S) if lags is None else lags
+    lags = premium_lags(slopes, lags, constant)
     gap_series = slopes[:, k:] - faced
     mean, left = priced.mean(axis=0), errors.mean(axis=0)
     total = float(((mean - mean.mean() if constant else mean) ** 2).sum())

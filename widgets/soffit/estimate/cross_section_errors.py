@@ -12,15 +12,16 @@ import numpy.typing as npt
 from scipy import linalg
 
 from soffit.errors import EstimationError
-from soffit.estimate.hac import long_run_covariance
+from soffit.estimate.hac import long_run_covariance, newey_west_lags
 from soffit.estimate.second_pass import SecondPassParts, covariance_root
 from soffit.estimate.statistic import Distribution, Family, NotApplicable, TestStatistic
-from soffit.settings import Reference, SecondPass
+from soffit.settings import LagRule, Reference, SecondPass
 
 __all__ = [
     "PremiumError",
     "fama_macbeth_covariance",
     "newey_west_covariance",
+    "premium_lags",
     "premium_tests",
     "robust_influence",
     "shanken_covariance",
@@ -102,6 +103,38 @@ def newey_west_covariance(slopes: Floats, lags: int) -> Floats:
     Newey and West (1987), Econometrica 55, 703-708.
     """
     return long_run_covariance(slopes - slopes.mean(axis=0), lags) / len(slopes)
+
+
+def premium_lags(slopes: Floats, lags: int | LagRule, constant: bool) -> int:
+    """Newey-West lags of mean slopes.
+
+    Parameters
+    ----------
+    slopes : ndarray, shape (T, P)
+        Period-by-period premia, the constant's first if there is one.
+    lags : int or LagRule
+        The number, or the rule. The automatic rule adds up the premia in units of their own scatter, the
+        constant left out.
+    constant : bool
+        Whether there is a constant.
+
+    Returns
+    -------
+    int
+
+    Raises
+    ------
+    EstimationError
+        If the number does not fit the sample.
+    """
+    T = len(slopes)
+    if not isinstance(lags, LagRule):
+        return newey_west_lags(LagRule.FIXED, T, fixed=lags)
+    if lags is not LagRule.AUTOMATIC:
+        return newey_west_lags(lags, T)
+    centred = slopes[:, int(constant) :] - slopes[:, int(constant) :].mean(axis=0)
+    scatter = centred.std(axis=0)
+    return newey_west_lags(lags, T, moments=centred / np.where(scatter > 0.0, scatter, 1.0))
 
 
 def shanken_covariance(parts: SecondPassParts) -> Floats:
