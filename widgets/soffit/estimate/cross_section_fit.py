@@ -269,15 +269,19 @@ class _World:
         size = float(np.linalg.norm(target - level))
         return cls(root, level, fitted / length, span, size) if length > 1e-9 * size else None
 
-    def means(self, true: Floats, draw: np.random.Generator, count: int) -> Floats:
-        """Mean returns for `count` samples at each true R², shape (count, G, N)."""
+    def ingredients(self, draw: np.random.Generator, count: int) -> Floats:
+        """Level, fitted direction and a random direction across it, shape (count, 3, N).
+
+        Mean returns at a true R² of ρ are the first plus √ρ times the second plus √(1 − ρ) times the third.
+        """
         noise = draw.standard_normal((count, len(self.level)))
         noise -= (noise @ self.span) @ self.span.T
         noise /= np.linalg.norm(noise, axis=1)[:, None]
-        fitted = np.sqrt(true)[None, :, None] * self.direction
-        left = np.sqrt(1.0 - true)[None, :, None] * noise[:, None, :]
-        whole = self.level + self.size * (fitted + left)
-        return whole if self.root is None else whole @ self.root.T
+        fixed = np.broadcast_to(
+            np.stack([self.level, self.size * self.direction]), (count, 2, noise.shape[1])
+        )
+        parts = np.concatenate([fixed, self.size * noise[:, None, :]], axis=1)
+        return parts if self.root is None else parts @ self.root.T
 
 
 def _draw(
@@ -297,7 +301,8 @@ def _draw(
     both = np.column_stack([scaled, centred])
     rows = both if generalised else scaled
     width = rows.shape[1]
-    batch = max(1, _BATCH_BYTES // (8 * (width * (T + K + N) + len(grid) * N)))
+    batch = max(1, _BATCH_BYTES // (8 * (width * (T + K + N) + 10 * N)))
+    mixture = np.stack([np.ones(len(grid)), np.sqrt(grid), np.sqrt(1.0 - grid)], axis=1)
     out = np.empty((draws, len(grid)))
     for start in range(0, draws, batch):
         count = min(batch, draws - start)
@@ -307,22 +312,35 @@ def _draw(
         design = np.linalg.solve(second[:, :K, :K], second[:, :K, K:]).transpose(0, 2, 1)
         if constant:
             design = np.concatenate([np.ones((count, N, 1)), design], axis=2)
-        target = (means[:, None, K:] + world.means(grid, draw, count)).transpose(0, 2, 1)
-        if generalised:
-            root = np.linalg.cholesky(second[:, K:, K:])
-            solved = np.linalg.solve(root, np.concatenate([design, target], axis=2))
-            design, target = solved[:, :, : design.shape[2]], solved[:, :, design.shape[2] :]
-        out[start : start + count] = _batched_r2(design, target, constant)
+        vectors = world.ingredients(draw, count).transpose(0, 2, 1)
+        vectors[:, :, 0] += means[:, K:]
+        whole, explained = _quadratics(design, vectors, constant, second[:, K:, K:] if generalised else None)
+        up, down = (np.einsum("gi,bij,gj->bg", mixture, form, mixture) for form in (explained, whole))
+        out[start : start + count] = up / down
     return out
 
 
-def _batched_r2(design: Floats, target: Floats, constant: bool) -> Floats:
-    """R² of each target in each batch: designs (B, N, P), targets (B, N, G)."""
-    q = np.linalg.qr(design / np.linalg.norm(design, axis=1)[:, None, :])[0]
-    loads = q.transpose(0, 2, 1) @ target
-    total = (target**2).sum(axis=1) - (loads[:, 0] ** 2 if constant else 0.0)
-    explained = (loads[:, int(constant) :] ** 2).sum(axis=1)
-    return np.asarray(explained / total)
+def _quadratics(
+    design: Floats, vectors: Floats, constant: bool, covariance: Floats | None
+) -> tuple[Floats, Floats]:
+    """Quadratic forms of total and explained sums of squares of combinations of vectors, each (B, 3, 3).
+
+    Designs are (B, N, P), vectors (B, N, 3), covariances (B, N, N); sums of squares are weighted by the inverse
+    covariance if there is one.
+    """
+    scaled = design / np.linalg.norm(design, axis=1)[:, None, :]
+    if covariance is None:
+        loads = np.linalg.qr(scaled)[0].transpose(0, 2, 1) @ vectors
+        within = vectors.transpose(0, 2, 1) @ vectors
+    else:
+        joined = np.concatenate([scaled, vectors], axis=2)
+        gram = joined.transpose(0, 2, 1) @ np.linalg.solve(covariance, joined)
+        P = design.shape[2]
+        loads = np.linalg.solve(np.linalg.cholesky(gram[:, :P, :P]), gram[:, :P, P:])
+        within = gram[:, P:, P:]
+    level, rest = loads[:, : int(constant)], loads[:, int(constant) :]
+    total = within - level.transpose(0, 2, 1) @ level
+    return total, rest.transpose(0, 2, 1) @ rest
 
 
 def _inverted(
