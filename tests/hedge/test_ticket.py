@@ -16,7 +16,8 @@ from hypothesis import strategies as st
 
 from soffit.errors import EstimationError, InputError, NotApplicableError
 from soffit.estimate.statistic import NotApplicable
-from soffit.hedge.ticket import Instrument, Rounding, Ticket, hedge_ticket, refuse_stale, spreadsheet_text
+from soffit.hedge.ticket import Instrument, Rounding, Ticket, hedge_ticket, refuse_stale
+from soffit.hedge.ticket_files import spreadsheet_text, write_csv, write_excel
 
 INDEX = Instrument("Index future", 1010.0, 250.0, margin=12_000.0)
 VALUE = Instrument("Value basket", 50.0, lot=100.0)
@@ -105,7 +106,7 @@ def test_margin_is_stated_or_said_to_be_missing() -> None:
         _ = partly.margin.value
     full = _ticket(instruments=[INDEX, Instrument("Value basket", 50.0, lot=100.0, margin=10.0)])
     assert full.margin == pytest.approx(27 * 12_000 + 46_400 * 10)
-    assert "788,000 USD" in full.margin_note
+    assert "at the stated rates" in full.margin_note
     assert "Variation margin" in full.margin_note
 
 
@@ -122,7 +123,7 @@ def test_stale_estimates_are_refused_with_the_reason() -> None:
 def test_export_keeps_names_as_text_and_numbers_as_numbers(tmp_path: Path) -> None:
     hostile = Instrument('=HYPERLINK("http://x","y")', 1010.0, 250.0)
     ticket = _ticket(legs=["@SUM(1)", "-HML"], instruments=[hostile, VALUE], assets=["+1+1", "Hlth"])
-    with ticket.to_csv(tmp_path / "ticket.csv").open(encoding="utf-8-sig", newline="") as file:
+    with write_csv(ticket, tmp_path / "ticket.csv").open(encoding="utf-8-sig", newline="") as file:
         lines = list(csv.DictReader(file))
     assert [line["Leg"] for line in lines] == ["'@SUM(1)", "'-HML"]
     assert lines[0]["Instrument"] == '\'=HYPERLINK("http://x","y")'
@@ -131,7 +132,7 @@ def test_export_keeps_names_as_text_and_numbers_as_numbers(tmp_path: Path) -> No
     assert lines[0]["Initial margin"] == ""
     assert (lines[0]["As of"], lines[0]["Estimated through"]) == ("2017-04-18", "2017-03-31")
 
-    book = openpyxl.load_workbook(ticket.to_excel(tmp_path / "ticket.xlsx"))
+    book = openpyxl.load_workbook(write_excel(ticket, tmp_path / "ticket.xlsx"))
     sheet = book["Orders"]
     head = [cell.value for cell in sheet[1]]
     cell = sheet.cell(2, head.index("Instrument") + 1)
@@ -140,7 +141,8 @@ def test_export_keeps_names_as_text_and_numbers_as_numbers(tmp_path: Path) -> No
     assert sheet.cell(2, head.index("Residual notional") + 1).value == pytest.approx(-42_500)
     notes = {row[0].value: row[1].value for row in book["Notes"].iter_rows()}
     assert notes["+1+1"] == 5_050_000
-    assert "margin" in notes["Margin"]
+    assert notes["Initial margin, USD"].startswith("not stated: no margin rate")
+    assert "clearing broker" in notes["Margin"]
 
 
 @pytest.mark.parametrize(

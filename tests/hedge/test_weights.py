@@ -14,9 +14,10 @@ from scipy import optimize
 from tests.universes import INDUSTRIES
 
 from soffit.errors import EstimationError, SettingError
-from soffit.estimate.regression import regress
+from soffit.estimate.regression import least_squares, regress
+from soffit.hedge.mimicking import mimicking_portfolios
 from soffit.hedge.quadratic import nearest_within, select_legs
-from soffit.hedge.weights import HedgeRule, hedge_ratios, mimicking_portfolios
+from soffit.hedge.weights import HedgeRule, beta_prior, hedge_ratios
 from soffit.settings import HedgeBeta
 
 FACTORS = ["MktRF", "SMB", "HML", "Mom"]
@@ -81,6 +82,17 @@ def test_vasicek_by_a_loop(french: pd.DataFrame) -> None:
             expected = (b * prior + centre * v) / (prior + v)
             assert hedge.ratios[i, k] == pytest.approx(expected, abs=1e-12)
             assert min(b, centre) - 1e-12 <= hedge.ratios[i, k] <= max(b, centre) + 1e-12
+
+
+def test_a_prior_from_elsewhere_and_a_fit_that_is_there_are_used(french: pd.DataFrame) -> None:
+    returns, factors = _french(french, "1990", "1994")
+    rule = HedgeRule(beta=HedgeBeta.VASICEK)
+    whole, fit = hedge_ratios(returns, factors, rule), least_squares(returns, factors)
+    prior = beta_prior(fit.coefficients[None, :, 1:], fit.errors[None, :, 1:] ** 2)
+    for i in range(12):
+        alone = hedge_ratios(returns[:, [i]], factors, rule, prior=prior)
+        np.testing.assert_allclose(alone.ratios[0], whole.ratios[i], atol=1e-12)
+    np.testing.assert_array_equal(hedge_ratios(returns, factors, rule, fit=fit).ratios, whole.ratios)
 
 
 def test_vasicek_collapses_to_the_mean_when_betas_differ_by_noise_only() -> None:

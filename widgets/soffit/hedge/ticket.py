@@ -5,14 +5,12 @@ Money is in the currency of the asset notionals. A ticket is refused when its es
 
 from __future__ import annotations
 
-import csv
 import itertools
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import date
 from enum import StrEnum
-from pathlib import Path
 
 import numpy as np
 import numpy.typing as npt
@@ -27,13 +25,11 @@ __all__ = [
     "Ticket",
     "hedge_ticket",
     "refuse_stale",
-    "spreadsheet_text",
 ]
 
 Floats = npt.NDArray[np.float64]
 
 _ENUMERATED = 12  # up to this many legs every way of rounding is compared
-_FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r", "\n", "＝", "＋", "－", "＠")
 
 
 class Rounding(StrEnum):
@@ -197,115 +193,15 @@ class Ticket:
     def margin_note(self) -> str:
         """What the desk must know about margin."""
         margin = self.margin
-        tail = (
-            "Variation margin is settled in cash as prices move, so a hedge of an asset that pays nothing until it is"
-            " sold needs a cash reserve."
+        head = (
+            "Initial margin is at the stated rates, which the clearing house or broker can raise at any time."
         )
         if isinstance(margin, NotApplicable):
-            return f"Initial margin is not stated: {margin.reason}. Ask the clearing broker before trading. {tail}"
-        return f"Initial margin of {margin:,.0f} {self.currency} at the stated rates, which can be raised. {tail}"
-
-    def rows(self) -> list[dict[str, str | float]]:
-        """Lines of the ticket as plain values, one mapping a leg; empty text where a margin is not stated."""
-        lines: list[dict[str, str | float]] = []
-        for order, beta in zip(self.orders, self.residual_betas, strict=True):
-            margin = order.margin
-            lines.append(
-                {
-                    "Leg": order.leg,
-                    "Instrument": order.instrument.name,
-                    "Side": order.side,
-                    "Contracts": abs(order.contracts),
-                    "Exact contracts": abs(order.exact),
-                    "Target notional": order.target,
-                    "Traded notional": order.notional,
-                    "Residual notional": order.residual,
-                    "Residual exposure": float(beta),
-                    "Price": order.instrument.price,
-                    "Multiplier": order.instrument.multiplier,
-                    "Lot": order.instrument.lot,
-                    "FX": order.instrument.fx,
-                    "Initial margin": "" if isinstance(margin, NotApplicable) else margin,
-                    "Currency": self.currency,
-                    "Hedges": "; ".join(self.assets),
-                    "As of": self.as_of.isoformat(),
-                    "Estimated through": self.estimated_through.isoformat(),
-                }
-            )
-        return lines
-
-    def to_csv(self, path: str | Path) -> Path:
-        """Write the ticket as a CSV file in UTF-8; text that a spreadsheet would run as a formula is disarmed."""
-        target = Path(path)
-        lines = self.rows()
-        with target.open("w", newline="", encoding="utf-8-sig") as file:
-            writer = csv.writer(file)
-            writer.writerow(list(lines[0]) if lines else [])
-            for line in lines:
-                writer.writerow(
-                    [spreadsheet_text(item) if isinstance(item, str) else item for item in line.values()]
-                )
-        return target
-
-    def to_excel(self, path: str | Path) -> Path:
-        """Write the ticket as an Excel file: orders on one sheet, assets and notes on the other.
-
-        Raises
-        ------
-        InputError
-            If the Excel writer is not installed.
-        """
-        try:
-            import xlsxwriter
-        except ImportError as error:
-            raise InputError(
-                "Excel files need the package xlsxwriter", remedy="install soffit with the extra 'memo'"
-            ) from error
-        target = Path(path)
-        book = xlsxwriter.Workbook(str(target), {"strings_to_formulas": False, "strings_to_urls": False})
-        bold = book.add_format({"bold": True})
-        sheet = book.add_worksheet("Orders")
-        lines = self.rows()
-        table: list[list[str | float]] = [
-            list(lines[0]) if lines else [],
-            *(list(line.values()) for line in lines),
-        ]
-        _fill(sheet, table, bold)
-        notes = book.add_worksheet("Notes")
-        assets: list[list[str | float]] = [
-            [name, float(size)] for name, size in zip(self.assets, self.notionals, strict=True)
-        ]
-        said = self.rounding_volatility
-        _fill(
-            notes,
-            [
-                ["Asset", f"Notional, {self.currency}"],
-                *assets,
-                ["Gross hedge", self.gross_hedge],
-                [
-                    "Volatility from rounding, per period",
-                    said.reason if isinstance(said, NotApplicable) else said,
-                ],
-                ["Margin", self.margin_note],
-            ],
-            bold,
+            head = f"Initial margin is not stated: {margin.reason}. Ask the clearing broker before trading."
+        return (
+            f"{head} Variation margin is settled in cash as prices move: a hedge of an asset that pays nothing"
+            " until it is sold needs a cash reserve."
         )
-        book.close()
-        return target
-
-
-def _fill(sheet: object, table: Sequence[Sequence[str | float]], bold: object) -> None:
-    for row, line in enumerate(table):
-        for column, item in enumerate(line):
-            style = bold if row == 0 else None
-            # write_string keeps a name that begins with '=' as text.
-            write = sheet.write_string if isinstance(item, str) else sheet.write_number  # type: ignore[attr-defined]
-            write(row, column, item, style)
-
-
-def spreadsheet_text(text: str) -> str:
-    """Text that a spreadsheet shows and does not run: an apostrophe before a formula's first character."""
-    return "'" + text if text.lstrip(" ").startswith(_FORMULA_STARTS) else text
 
 
 def refuse_stale(estimated_through: date, as_of: date, longest_age: int) -> None:

@@ -4,10 +4,10 @@ A hedge ratio never sees the return it hedges: a window ends `lag` whole periods
 ratios hedge. All quantities are decimal per period. Arrays in, frozen results out.
 
 What published work says about the distance between promise and delivery: a regression's R² overstates, and a
-single hold-out understates, the risk that a hedge removes (Lien 2007; Dahlgran 2009); industries' factor loadings
-wander, so that they are known imprecisely even from five years of months (Fama and French 1997); betas from short
-windows move a good deal over time (Lewellen and Nagel 2006); and estimation error is a main reason why refined
-hedge ratios seldom beat plain ones out of sample (Wang, Wu and Yang 2015).
+single hold-out understates, the risk that a hedge removes (Lien 2006; Dahlgran 2009); the factor loadings of
+industries are estimated imprecisely and do not stand still (Fama and French 1997); betas from short windows vary over
+time, though by too little to explain large alphas (Lewellen and Nagel 2006); and estimation error is one reason why
+refined hedge ratios seldom beat a simple one out of sample (Wang, Wu and Yang 2015).
 """
 
 from __future__ import annotations

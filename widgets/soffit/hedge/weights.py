@@ -4,8 +4,7 @@ Ratios are the factor's sold notional per unit of the asset's value: a ratio of 
 for 1 long. All quantities are decimal per period. Arrays in, frozen results out.
 
 Sources: minimum variance, Johnson (1960) and Ederington (1979); shrinkage across assets, Vasicek (1973) with the
-prior variance of true betas that Lally (1998) asks for; lagged betas, Dimson (1979); ridge, Hoerl and Kennard
-(1970); mimicking portfolios, Breeden, Gibbons and Litzenberger (1989) and Lamont (2001).
+prior variance of true betas that Lally (1998) asks for; lagged betas, Dimson (1979); ridge, Hoerl and Kennard (1970).
 """
 
 from __future__ import annotations
@@ -16,23 +15,21 @@ from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
-from scipy import stats
 
 from soffit.errors import EstimationError, SettingError
-from soffit.estimate.regression import least_squares
-from soffit.estimate.statistic import Distribution, Family, TestStatistic
+from soffit.estimate.regression import LeastSquares, least_squares
 from soffit.hedge.quadratic import LegChoice, nearest_within, select_legs
 from soffit.settings import HedgeBeta
 
 __all__ = [
+    "BetaPrior",
     "HedgeRatios",
     "HedgeRule",
-    "MimickingPortfolios",
     "WindowMoments",
     "apply_rule",
+    "beta_prior",
     "dimson_design",
     "hedge_ratios",
-    "mimicking_portfolios",
 ]
 
 Floats = npt.NDArray[np.float64]
@@ -167,7 +164,53 @@ class HedgeRatios:
         return np.asarray(np.abs(self.ratios).sum(axis=1), dtype=float)
 
 
-def apply_rule(moments: WindowMoments, rule: HedgeRule) -> tuple[Floats, LegChoice | None, Bools]:
+@dataclass(frozen=True, eq=False)
+class BetaPrior:
+    """Where betas lie across assets, which Vasicek shrinkage pulls each one towards.
+
+    Parameters
+    ----------
+    centre : ndarray, shape (W, K)
+        Mean beta.
+    variance : ndarray, shape (W, K)
+        Variance of the true betas: the spread of the estimates less their average sampling variance, zero where the
+        spread is all noise.
+    """
+
+    centre: Floats
+    variance: Floats
+
+
+def beta_prior(beta: Floats, variance: Floats) -> BetaPrior:
+    """Estimate the prior from the cross-section of each window.
+
+    Parameters
+    ----------
+    beta, variance : ndarray, shape (W, N, K)
+        Estimates and their sampling variances; NaN where an asset is not in a window.
+
+    Raises
+    ------
+    EstimationError
+        If a window has a single asset.
+    """
+    known = np.isfinite(beta)
+    counts = known.sum(axis=1)
+    if beta.shape[1] < 2 or (counts == 1).any():
+        raise EstimationError(
+            "Vasicek shrinkage needs a cross-section of at least two assets in every window",
+            remedy="add assets, or use plain or ridge betas",
+        )
+    many = np.maximum(counts, 2)
+    centre = np.where(known, beta, 0.0).sum(axis=1) / many
+    spread = np.where(known, (beta - centre[:, None, :]) ** 2, 0.0).sum(axis=1) / (many - 1)
+    noise = np.where(known, variance, 0.0).sum(axis=1) / many
+    return BetaPrior(centre, np.maximum(spread - noise, 0.0))
+
+
+def apply_rule(
+    moments: WindowMoments, rule: HedgeRule, prior: BetaPrior | None = None
+) -> tuple[Floats, LegChoice | None, Bools]:
     """Turn the estimates of W windows into hedge ratios.
 
     Parameters
@@ -176,6 +219,8 @@ def apply_rule(moments: WindowMoments, rule: HedgeRule) -> tuple[Floats, LegChoi
         Estimates.
     rule : HedgeRule
         The rule.
+    prior : BetaPrior, optional
+        What Vasicek shrinkage pulls towards; estimated from these assets if None.
 
     Returns
     -------
@@ -192,7 +237,8 @@ def apply_rule(moments: WindowMoments, rule: HedgeRule) -> tuple[Floats, LegChoi
     windows, count, width = moments.beta.shape
     metric = moments.gram
     if rule.beta is HedgeBeta.VASICEK:
-        ratios = _vasicek(moments.beta, moments.beta_variance)
+        prior = prior or beta_prior(moments.beta, moments.beta_variance)
+        ratios = _shrunk(moments.beta, moments.beta_variance, prior)
     elif rule.beta is HedgeBeta.DIMSON:
         if moments.lagged is None:
             raise EstimationError("The Dimson sums were not estimated")
@@ -220,29 +266,13 @@ def apply_rule(moments: WindowMoments, rule: HedgeRule) -> tuple[Floats, LegChoi
     return ratios, legs, capped
 
 
-def _vasicek(beta: Floats, variance: Floats) -> Floats:
-    """Precision-weighted mean of each beta and the cross-sectional mean, shape (W, N, K).
-
-    The prior variance is that of the true betas: the spread of the estimates less their average sampling variance,
-    zero where the spread is all noise.
-    """
-    known = np.isfinite(beta)
-    if known.shape[1] < 2 or (known.any(axis=1) & (known.sum(axis=1) < 2)).any():
-        raise EstimationError(
-            "Vasicek shrinkage needs a cross-section of at least two assets in every window",
-            remedy="add assets, or use plain or ridge betas",
-        )
+def _shrunk(beta: Floats, variance: Floats, prior: BetaPrior) -> Floats:
+    """Precision-weighted mean of each beta and the prior's centre, shape (W, N, K)."""
+    spread = prior.variance[:, None, :]
     with np.errstate(invalid="ignore", divide="ignore"):
-        many = np.maximum(known.sum(axis=1, keepdims=True), 1)
-        centre = np.where(known, beta, 0.0).sum(axis=1, keepdims=True) / many
-        spread = np.where(known, (beta - centre) ** 2, 0.0).sum(axis=1, keepdims=True) / np.maximum(
-            many - 1, 1
-        )
-        noise = np.where(known, variance, 0.0).sum(axis=1, keepdims=True) / many
-        prior = np.maximum(spread - noise, 0.0)
-        total = prior + variance
-        weight = np.where(total > 0, prior / total, 1.0)  # a beta known without error stays
-    return np.asarray(weight * beta + (1.0 - weight) * centre, dtype=float)
+        # A beta known without error stays as it is.
+        weight = np.where(spread + variance > 0, spread / (spread + variance), 1.0)
+    return np.asarray(weight * beta + (1.0 - weight) * prior.centre[:, None, :], dtype=float)
 
 
 def dimson_design(factors: Floats, lags: int) -> Floats:
@@ -255,7 +285,13 @@ def dimson_design(factors: Floats, lags: int) -> Floats:
 
 
 def hedge_ratios(
-    returns: Floats, factors: Floats, rule: HedgeRule | None = None, *, names: Sequence[str] = ()
+    returns: Floats,
+    factors: Floats,
+    rule: HedgeRule | None = None,
+    *,
+    fit: LeastSquares | None = None,
+    prior: BetaPrior | None = None,
+    names: Sequence[str] = (),
 ) -> HedgeRatios:
     """Hedge ratios of N assets from one sample.
 
@@ -267,6 +303,10 @@ def hedge_ratios(
         Excess returns of the hedge legs.
     rule : HedgeRule, optional
         How ratios follow from the estimates; plain betas by default.
+    fit : LeastSquares, optional
+        The classical regression of these returns on these factors, where it is there already.
+    prior : BetaPrior, optional
+        What Vasicek shrinkage pulls towards; estimated from these assets if None.
     names : sequence of str
         Factor names, for messages.
 
@@ -278,7 +318,7 @@ def hedge_ratios(
     """
     rule = rule or HedgeRule()
     returns, factors = np.asarray(returns, dtype=float), np.asarray(factors, dtype=float)
-    fit = least_squares(returns, factors, names=names)
+    fit = fit or least_squares(returns, factors, names=names)
     rows, width = factors.shape
     beta, error = fit.coefficients[:, 1:], fit.errors[:, 1:]
     lagged: Floats | None = None
@@ -288,7 +328,7 @@ def hedge_ratios(
     moments = WindowMoments(
         beta[None], error[None] ** 2, (centred.T @ centred)[None], np.array([rows], dtype=np.int64), lagged
     )
-    ratios, legs, capped = apply_rule(moments, rule)
+    ratios, legs, capped = apply_rule(moments, rule, prior)
     hedged = returns - factors @ ratios[0].T
     mean = hedged.mean(axis=0)
     ssr = ((hedged - mean) ** 2).sum(axis=0)
@@ -313,84 +353,3 @@ def _dimson_sums(returns: Floats, factors: Floats, lags: int, names: Sequence[st
     labels = [f"{name} lagged {lag}" if lag else name for lag in range(lags + 1) for name in names]
     fit = least_squares(returns[lags:], dimson_design(factors, lags), names=labels)
     return np.asarray(fit.coefficients[:, 1:].reshape(-1, lags + 1, width).sum(axis=1), dtype=float)
-
-
-@dataclass(frozen=True, eq=False)
-class MimickingPortfolios:
-    """Portfolios of traded base assets that follow non-traded factors most closely.
-
-    Parameters
-    ----------
-    weights : ndarray, shape (J, P)
-        Weights of the P base assets; one unit moves one for one with the spanned part of the factor.
-    r2 : ndarray, shape (J,)
-        Share of the factor's variance that the base assets span.
-    tests : tuple of TestStatistic
-        Whether the base spans the factor at all: F test of zero weights.
-    returns : ndarray, shape (T, J)
-        Excess returns of the portfolios over the estimation sample.
-    """
-
-    weights: Floats
-    r2: Floats
-    tests: tuple[TestStatistic, ...]
-    returns: Floats
-
-    def on(self, base: Floats) -> Floats:
-        """Returns of the portfolios, weights as estimated, on other dates' base returns, shape (T', J)."""
-        return np.asarray(np.asarray(base, dtype=float) @ self.weights.T, dtype=float)
-
-    def in_base(self, ratios: Floats) -> Floats:
-        """Hedge ratios on the factors as ratios on the base assets, shape (N, J) to (N, P)."""
-        return np.asarray(np.asarray(ratios, dtype=float) @ self.weights, dtype=float)
-
-
-def mimicking_portfolios(
-    nontraded: Floats, base: Floats, *, names: Sequence[str] = ()
-) -> MimickingPortfolios:
-    """Project non-traded factors on traded base assets.
-
-    Parameters
-    ----------
-    nontraded : ndarray, shape (T, J)
-        Factors that cannot be bought, in their own units.
-    base : ndarray, shape (T, P)
-        Excess returns of the base assets.
-    names : sequence of str
-        Names of the base assets, for messages.
-
-    Raises
-    ------
-    EstimationError
-        If the sample is too short, a value is missing, the base assets are collinear, or a factor does not move.
-
-    Notes
-    -----
-    The weights are the slopes of a regression on a constant and the base returns: the portfolio of maximum
-    correlation (Breeden, Gibbons and Litzenberger 1989), as an economic tracking portfolio (Lamont 2001).
-    """
-    nontraded, base = np.asarray(nontraded, dtype=float), np.asarray(base, dtype=float)
-    fit = least_squares(nontraded, base, names=names)
-    if not np.isfinite(fit.r2).all():
-        still = int(np.flatnonzero(~np.isfinite(fit.r2))[0])
-        raise EstimationError(
-            f"Non-traded factor {still + 1} does not move in this sample",
-            remedy="leave it out or use a longer sample",
-        )
-    weights = fit.coefficients[:, 1:]
-    width = base.shape[1]
-    law = Distribution(Family.F, (float(width), float(fit.df)))
-    tests = []
-    for share in fit.r2:
-        value = float("inf") if share >= 1.0 else float(share / width / ((1.0 - share) / fit.df))
-        tests.append(
-            TestStatistic(
-                "Spanning F",
-                value,
-                "no base asset moves with the factor",
-                law,
-                float(stats.f(width, fit.df).sf(value)),
-                "breeden-gibbons-litzenberger-1989",
-            )
-        )
-    return MimickingPortfolios(weights, fit.r2, tuple(tests), base @ weights.T)
