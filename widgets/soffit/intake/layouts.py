@@ -41,7 +41,7 @@ def widen(raw: RawTable, source: Source, missing: Missing) -> RawTable:
             else detect_marks([list(cells)])
         )
     column = read_numbers(cells, values_in, raw.place, marks, missing)
-    labels = sorted(set(series))
+    labels = list(dict.fromkeys(series))
     clean_names(labels, f"column '{names_in}' of {raw.source}")
     dates, firsts, day = _days(raw.dates)
     where = pd.Index(labels).get_indexer(pd.Index(series))

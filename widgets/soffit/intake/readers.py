@@ -89,6 +89,8 @@ def _read_path(path: Path, source: Source, limits: Limits) -> RawTable:
     check_file(path, limits)
     name = source.name or path.name
     ending = path.suffix.lower()
+    if source.sheet is not None and not source.name:
+        name = f"{path.name}, sheet {source.sheet}"
     if ending in _REFUSED:
         raise InputError(
             f"Files that end in '{ending}' are not read ('{path.name}')", remedy=_REFUSED[ending]

@@ -166,52 +166,66 @@ def settle_units(
 
 
 def _unit(table: Table, position: int, role: Role) -> Units | None:
+    """The unit of one column by its size; None when it could be either."""
     x = table.values[:, position]
-    x = np.abs(x[~np.isnan(x)])
-    if len(x) == 0:
+    x = x[~np.isnan(x)]
+    size = np.abs(x)
+    if not (size > 0).any():
         return None
-    if role is Role.RISK_FREE:
+    per_year = (table.frequency or Frequency.MONTHLY).periods_per_year
+    if role is Role.RISK_FREE or _like_a_rate(x):
         # Rates do not scale with the root of time, and a low rate in per cent looks like a high one in decimals.
-        yearly = float(np.median(x)) * (table.frequency or Frequency.MONTHLY).periods_per_year
+        yearly = float(np.median(size)) * per_year
         return Units.DECIMAL if 0 < yearly < 0.04 else Units.PERCENT if yearly > 0.5 else None
-    if float(np.nanmin(table.values[:, position])) < -1.0 and float(np.median(x)) > 0.02:
-        return Units.PERCENT
-    months = np.sqrt((table.frequency or Frequency.MONTHLY).periods_per_year / 12)
-    middle = float(np.median(x[x > 0])) * months if (x > 0).any() else 0.0
+    middle = float(np.median(size[size > 0])) * np.sqrt(per_year / 12)
     if middle > _BEYOND_PERCENT:
+        name = table.names[position]
         raise InputError(
-            f"Column '{table.names[position]}' of {table.source} is too large for returns in per "
-            f"cent (median {np.median(x):g})",
-            remedy=f"say what it is: content={{'{table.names[position]}': 'prices'}}, "
-            f"units={{...: 'basis points'}}, "
-            "or roles={...: 'non-traded factor'}",
+            f"Column '{name}' of {table.source} is too large for returns in per cent (median {np.median(size):g})",
+            remedy=f"say what it is: content={{'{name}': 'prices'}}, units={{'{name}': 'basis points'}} or "
+            f"roles={{'{name}': 'non-traded factor'}}",
         )
-    return Units.DECIMAL if middle < _SURELY_DECIMAL else Units.PERCENT if middle > _SURELY_PERCENT else None
+    if middle < _SURELY_DECIMAL:
+        return Units.DECIMAL
+    # Between the two, several values below -1 can only be per cent: no asset loses more than everything.
+    return Units.PERCENT if middle > _SURELY_PERCENT or int((x < -1.0).sum()) >= 3 else None
+
+
+def _like_a_rate(x: Floats) -> bool:
+    """Whether a column hardly moves from one period to the next and is hardly ever negative, as cash does."""
+    steps = np.abs(np.diff(x))
+    return (
+        len(x) >= _LEAST
+        and float((x < 0).mean()) <= 0.05
+        and float(np.median(steps)) < 0.3 * float(np.median(x))
+    )
 
 
 def _neighbours(table: Table, found: dict[str, Units], unclear: list[str], record: RecordBuilder) -> None:
-    told = {unit for name, unit in found.items() if table.units.get(name) != PRICES}
-    if not unclear:
+    """Let the columns that are plain decide for those that are not."""
+    zero = [name for name in unclear if not np.nan_to_num(table.values[:, table.names.index(name)]).any()]
+    found.update(dict.fromkeys(zero, Units.DECIMAL))
+    open_ = [name for name in unclear if name not in zero]
+    told = {unit for name, unit in found.items() if table.units.get(name) != PRICES and name not in zero}
+    if not open_:
         return
     if len(told) == 1:
         unit = told.pop()
-        found.update(dict.fromkeys(unclear, unit))
+        found.update(dict.fromkeys(open_, unit))
         record.add(
             EntryKind.UNITS,
-            f"{listed(unclear)} could be decimal or per cent by their size; they were taken as {unit.value}, "
+            f"{listed(open_)} could be decimal or per cent by their size; they were taken as {unit.value}, "
             "like the other columns of the source.",
-            series=unclear,
-            rows=len(unclear),
+            Severity.NOTE,
+            series=open_,
+            rows=len(open_),
             source=table.source,
         )
         return
-    x = table.values[:, table.names.index(unclear[0])]
-    if not (x[~np.isnan(x)] != 0).any():
-        found.update(dict.fromkeys(unclear, Units.DECIMAL))
-        return
+    x = table.values[:, table.names.index(open_[0])]
     size = float(np.nanmedian(np.abs(x)))
     raise InputError(
-        f"{listed(unclear)} in {table.source} could be decimal or per cent: a typical value is {size:g}, that is "
+        f"{listed(open_)} in {table.source} could be decimal or per cent: a typical value is {size:g}, that is "
         f"{size:.0%} or {size:.2g}%",
         remedy="say which with units='decimal' or units='percent'",
     )
