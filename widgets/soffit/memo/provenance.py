@@ -89,6 +89,7 @@ def _settings_table(settings: Settings) -> SimpleTable:
     for name, _ in Settings.fields():
         note, value = Settings.note(name), settings.get(name)
         unit = note.unit if isinstance(value, int | float) and not isinstance(value, bool) else ""
+        unit = unit.removesuffix("s") if value == 1 and unit == "periods" else unit
         changed = "" if value == default.get(name) else "changed"
         rows.append((name, note.label, f"{setting_text(value)} {unit}".strip(), changed))
     return SimpleTable("Settings", ("Name", "Setting", "Value", "From default"), _plain(rows))

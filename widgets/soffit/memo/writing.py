@@ -18,12 +18,17 @@ class Format(StrEnum):
     """What a pack can be written as."""
 
     HTML = "html"
+    WORD = "docx"
+    PDF = "pdf"
+    EXCEL = "xlsx"
+    MARKDOWN = "md"
+    LATEX = "tex"
     PNG = "png"
     SVG = "svg"
     PDF_FIGURES = "pdf figures"
 
 
-def _text(name: str, module: str, function: str) -> Callable[[Memo], Mapping[str, bytes]]:
+def _one(name: str, module: str, function: str) -> Callable[[Memo], Mapping[str, bytes]]:
     def one(memo: Memo) -> Mapping[str, bytes]:
         made = getattr(import_module(module), function)(memo)
         return {name: made.encode("utf-8") if isinstance(made, str) else made}
@@ -39,9 +44,20 @@ def _many(module: str, function: str) -> Callable[[Memo], Mapping[str, bytes]]:
     return several
 
 
+def _markdown(memo: Memo) -> Mapping[str, bytes]:
+    from soffit.memo.markdown import markdown, table_files
+
+    return {"memo.md": markdown(memo).encode("utf-8"), **table_files(memo)}
+
+
 # Writers are imported when they are asked for: Word, Excel and the rest are an extra.
 _WRITERS: dict[Format, Callable[[Memo], Mapping[str, bytes]]] = {
-    Format.HTML: _text("memo.html", "soffit.memo.html", "html"),
+    Format.HTML: _one("memo.html", "soffit.memo.html", "html"),
+    Format.WORD: _one("memo.docx", "soffit.memo.word", "word"),
+    Format.PDF: _one("memo.pdf", "soffit.memo.pdf", "pdf"),
+    Format.EXCEL: _one("memo.xlsx", "soffit.memo.excel", "excel"),
+    Format.MARKDOWN: _markdown,
+    Format.LATEX: _many("soffit.memo.latex", "table_files"),
     Format.PNG: _many("soffit.memo.images", "png_files"),
     Format.SVG: _many("soffit.memo.images", "svg_files"),
     Format.PDF_FIGURES: _many("soffit.memo.images", "pdf_files"),
