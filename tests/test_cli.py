@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import subprocess
 import sys
+from html import unescape
 from pathlib import Path
 
 import pytest
@@ -46,10 +47,8 @@ def test_demo_writes_a_memo_and_its_data(tmp_path: Path) -> None:
     assert result.exit_code == 0
     written = {path.name for path in (tmp_path / "memo").rglob("*") if path.is_file()}
     assert {"memo.html", "returns.csv", "factors.csv"} <= written
-    page = (tmp_path / "memo" / "memo.html").read_text(encoding="utf-8")
-    assert build("ceiling", demo_study()).finding.text.replace("'", "&#39;") in page or (
-        build("ceiling", demo_study()).finding.text in page
-    )
+    page = unescape((tmp_path / "memo" / "memo.html").read_text(encoding="utf-8"))
+    assert build("ceiling", demo_study()).finding.text in page
     assert {".png", ".svg", ".pdf"} <= {Path(name).suffix for name in written}
 
 
@@ -62,7 +61,7 @@ def test_demo_writes_a_memo_and_its_data(tmp_path: Path) -> None:
         (["--set", "error_type=HC7"], 2, "HC3"),
         (["--units", "permille"], 2, "percent"),
         (["--risk-free", "Kash"], 3, "Cash"),
-        (["--set", "start=2024-06-01"], 4, "rows"),
+        (["--set", "start=2024-09-01"], 4, "rows"),
     ],
 )
 def test_refusals_have_their_exit_codes(

@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from soffit import __version__
-from soffit.errors import EstimationError, InputError, SettingError, SoffitError
+from soffit.errors import EstimationError, InputError, SettingError, SoffitError, nearest
 
 if TYPE_CHECKING:
     from soffit.settings import Settings
@@ -78,7 +78,7 @@ def _study_options(command: Callable[..., None]) -> Callable[..., None]:
             "formats",
             multiple=True,
             metavar="FORMAT",
-            help="Format of the memo, html if left out: html, docx, pdf, xlsx, latex, markdown or pptx. Repeatable.",
+            help="html, docx, pdf, xlsx, md, tex, png, svg or pdf figures; html and pictures if left out. Repeatable.",
         ),
     ]
     for option in reversed(options):
@@ -104,6 +104,7 @@ def demo(
     from soffit.settings import Histories, Settings
     from soffit.study import Study
 
+    wanted = _formats(formats)
     folder = out or Path("soffit-memo")
     folder.mkdir(parents=True, exist_ok=True)
     returns, factors = demo_frames()
@@ -112,7 +113,7 @@ def demo(
     factors.to_csv(files[1], float_format="%.8f")
     base = Settings.load(settings_file) if settings_file else Settings(histories=Histories.OWN)
     study = Study.open(*files, risk_free="Cash", settings=_with(base, sets, ceiling))
-    _report(study, folder, formats)
+    _report(study, folder, wanted)
 
 
 @main.command()
@@ -149,10 +150,11 @@ def judge(
     from soffit.settings import Settings
     from soffit.study import Study
 
+    wanted = _formats(formats)
     settings = _with(Settings.load(settings_file) if settings_file else Settings(), sets, ceiling)
     options: dict[str, Any] = {"risk_free": risk_free, "excess": excess, "units": units, "roles": roles}
     given = {name: value for name, value in options.items() if value is not None}
-    _report(Study.open(returns, factors, settings=settings, **given), out, formats)
+    _report(Study.open(returns, factors, settings=settings, **given), out, wanted)
 
 
 def _with(settings: Settings, sets: tuple[str, ...], ceiling: float | None) -> Settings:
@@ -160,6 +162,18 @@ def _with(settings: Settings, sets: tuple[str, ...], ceiling: float | None) -> S
     if ceiling is not None:
         values["ceiling"] = ceiling
     return settings.changed(values)
+
+
+def _formats(names: tuple[str, ...]) -> tuple[str, ...]:
+    """Check the formats before anything is computed."""
+    from soffit.memo import Format
+
+    if not names:
+        return Format.HTML, Format.PNG, Format.SVG, Format.PDF_FIGURES
+    for name in names:
+        if name not in list(Format):
+            raise SettingError(f"There is no format '{name}'", remedy=nearest(name, list(Format)))
+    return names
 
 
 def _parsed(item: str) -> tuple[str, Any]:
@@ -210,7 +224,7 @@ def _write_memo(study: Study, exhibits: list[Any], out: Path, formats: tuple[str
     for exhibit in exhibits:
         pack.keep(exhibit)
     click.echo()
-    for path in write(pack, out, formats or ("html",)):
+    for path in write(pack, out, formats):
         click.echo(f"Wrote {path}")
 
 

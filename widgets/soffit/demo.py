@@ -72,7 +72,7 @@ STRATEGIES: tuple[Strategy, ...] = (
     Strategy(
         "Juniper Private Credit", 0.010, 0.050, (0.45, -0.05, 0.40, -0.05), smoothing=(0.45, 0.33, 0.22)
     ),
-    Strategy("Larch Steady Income", 0.062, 0.019, (0.12, 0.15, 0.25, 0.00)),
+    Strategy("Larch Steady Income", 0.046, 0.021, (0.12, 0.15, 0.25, 0.00)),
     Strategy("Maple Macro", 0.015, 0.085, (0.15, 0.30, 0.20, 0.45)),
     Strategy("Oak Government Bond", 0.001, 0.008, (0.00, 0.95, 0.01, 0.00)),
     Strategy("Poplar Convertible", -0.004, 0.048, (0.50, 0.10, 0.35, -0.05)),
@@ -99,7 +99,7 @@ def demo_frames() -> tuple[pd.DataFrame, pd.DataFrame]:
     """
     draw = np.random.default_rng(_SEED)
     dates = pd.period_range(_FIRST, periods=_MONTHS, freq="M").to_timestamp(how="end").normalize()
-    root = np.linalg.cholesky(_CORRELATION) * 1.0
+    root = np.linalg.cholesky(_CORRELATION)
     shocks = draw.standard_t(8, size=(_MONTHS, 4)) / np.sqrt(8 / 6) @ root.T
     monthly = _VOLATILITY / np.sqrt(12)
     factors = shocks * monthly + _SHARPE * _VOLATILITY / 12

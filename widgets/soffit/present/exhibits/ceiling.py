@@ -138,10 +138,12 @@ def _bound_marks(x: Floats, base: Floats, factor: float, ceiling: float) -> list
     ]
 
 
-def _symmetric(values: Floats, floor: float) -> tuple[float, float]:
-    finite = np.abs(values[np.isfinite(values)])
-    reach = max(float(finite.max(initial=0.0)) * 1.15, floor)
-    return -reach, reach
+def _around_zero(values: Floats, floor: float) -> tuple[float, float]:
+    """Limits that hold zero, every value, and some room on either side."""
+    finite = values[np.isfinite(values)]
+    low, high = float(finite.min(initial=-floor)), float(finite.max(initial=floor))
+    room = 0.12 * (high - low)
+    return low - room, high + room
 
 
 def _statuses(verdict: CeilingVerdict) -> str:
@@ -162,7 +164,7 @@ def alpha_sigma_figure(study: Study, verdict: CeilingVerdict) -> FigureSpec:
         key="ceiling-alpha-sigma",
         title="Alpha against residual volatility",
         x=Axis("Residual volatility, % a year", NumberForm.PERCENT, (0.0, reach)),
-        y=Axis("Alpha, % a year", NumberForm.PERCENT, _symmetric(alpha, 0.01)),
+        y=Axis("Alpha, % a year", NumberForm.PERCENT, _around_zero(alpha, 0.01)),
         marks=tuple(marks),
         alt=(
             f"Alphas of {plural(len(alpha), 'asset')} against their residual volatilities, with the band that a "
@@ -189,7 +191,7 @@ def alpha_r2_figure(study: Study, verdict: CeilingVerdict) -> FigureSpec:
         key="ceiling-alpha-r2",
         title="Alpha per unit of total volatility against R²",
         x=Axis("R²", NumberForm.SHARE, (0.0, 1.0)),
-        y=Axis("Alpha / total volatility, a year", NumberForm.RATIO, _symmetric(y, 0.5)),
+        y=Axis("Alpha / total volatility, a year", NumberForm.RATIO, _around_zero(y, 0.5)),
         marks=tuple(marks),
         alt=(
             f"Alphas of {plural(len(y), 'asset')} over their total volatilities against R², with the curve "
