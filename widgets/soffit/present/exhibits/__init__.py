@@ -16,6 +16,11 @@ EXHIBITS: dict[str, str] = {
     "regression": "soffit.present.exhibits.regression",
     "joint": "soffit.present.exhibits.joint",
     "ceiling": "soffit.present.exhibits.ceiling",
+    "prices-of-risk": "soffit.present.exhibits.prices_of_risk",
+    "hedge": "soffit.present.exhibits.hedge",
+    "hedge-walk": "soffit.present.exhibits.hedge_walk",
+    "hedge-costs": "soffit.present.exhibits.hedge_costs",
+    "book": "soffit.present.exhibits.book",
 }
 
 
