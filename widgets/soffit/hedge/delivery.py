@@ -21,7 +21,7 @@ __all__ = ["Delivery", "Promise", "VarianceGap", "WalkReport", "report_walk"]
 Floats = npt.NDArray[np.float64]
 Ints = npt.NDArray[np.int64]
 
-_BLOCKS_FOR_ERROR = 4  # fewer blocks give no usable error of the drift
+_BLOCKS_FOR_ERROR = 8  # fewer blocks give no usable error of the drift
 
 
 @dataclass(frozen=True, eq=False)
@@ -116,7 +116,7 @@ class VarianceGap:
         The rest of the plain hedge's delivered variance at the ratios as traded: betas that moved between estimation
         and use. Zero on average when betas are constant; a negative value is sampling noise.
     drift_error : ndarray
-        Standard error of `drift` from its spread over blocks of time; NaN with fewer than four blocks.
+        Standard error of `drift` from its spread over blocks of time; NaN with fewer than eight blocks.
     holding : ndarray
         What the drift of the hedge ratios themselves between re-hedges added; zero when every period is re-hedged.
     rule : ndarray

@@ -146,7 +146,7 @@ class HedgeWalk:
 
         Columns: promised, delivered (volatility, decimal a year); whole, residual_risk, estimation, drift, holding,
         rule (shares of the promised variance; the five parts add up to the whole); drift_t (drift over its standard
-        error, NaN with fewer than four blocks of time).
+        error, NaN with fewer than eight blocks of time).
         """
         gap, root = self.report.gap, np.sqrt(self.periods_per_year)
         with np.errstate(divide="ignore", invalid="ignore"):
