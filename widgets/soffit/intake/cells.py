@@ -268,38 +268,58 @@ def detect_marks(columns: Iterable[Sequence[Any]]) -> Marks:
     InputError
         If commas can be read both as decimal and as thousands marks, or are used as both.
     """
-    decimal_comma = thousands_comma = unclear = thousands_dot = ""
-    plain_dot = False
+    seen = _Seen()
+    without_comma: list[list[str]] = []
     for cells in columns:
-        for cell in cells:
-            if not isinstance(cell, str) or ("," not in cell and "." not in cell):
+        texts = [cell for cell in cells if isinstance(cell, str)]
+        if "," in "".join(texts):
+            seen.look(texts)
+        else:
+            without_comma.append(texts)
+    if seen.decimal_comma or seen.unclear:
+        # Only now does it matter whether a point is a decimal mark.
+        for texts in without_comma:
+            seen.look(texts)
+    if seen.decimal_comma and (seen.thousands_comma or seen.plain_dot):
+        other = seen.thousands_comma or "a decimal point"
+        raise InputError(
+            f"Numbers are written both with a decimal comma ('{seen.decimal_comma}') and with {other!r}",
+            remedy="write all of them one way, or say which with decimal=',' or decimal='.'",
+        )
+    if seen.decimal_comma:
+        return Marks(",", ".")
+    if seen.unclear and not (seen.thousands_comma or seen.plain_dot):
+        raise InputError(
+            f"'{seen.unclear}' can be a thousand or a decimal number",
+            remedy="say which with decimal=',' or decimal='.'",
+        )
+    return Marks(".", "," if seen.unclear or seen.thousands_comma else "")
+
+
+@dataclass
+class _Seen:
+    """An example of each way in which points and commas were seen."""
+
+    decimal_comma: str = ""
+    thousands_comma: str = ""
+    unclear: str = ""
+    plain_dot: bool = False
+
+    def look(self, texts: Iterable[str]) -> None:
+        """Look at the cells that hold a point or a comma."""
+        for cell in texts:
+            if "," not in cell and "." not in cell:
                 continue
             text = cell.strip().translate(_SPACES).strip("()%+-")
             if "," not in text:
-                plain_dot = plain_dot or (
-                    text.count(".") == 1 and not re.fullmatch(r"[1-9]\d{0,2}\.\d{3}", text)
-                )
-                thousands_dot = thousands_dot or (text if text.count(".") > 1 else "")
+                grouped = re.fullmatch(r"[1-9]\d{0,2}\.\d{3}", text)
+                self.plain_dot = self.plain_dot or (text.count(".") == 1 and not grouped)
             elif "." in text:
-                thousands_comma = thousands_comma or (text if _GROUPED[","].fullmatch(text) else "")
-                decimal_comma = decimal_comma or (text if _GROUPED["."].fullmatch(text) else "")
+                self.thousands_comma = self.thousands_comma or (text if _GROUPED[","].fullmatch(text) else "")
+                self.decimal_comma = self.decimal_comma or (text if _GROUPED["."].fullmatch(text) else "")
             elif text.count(",") > 1:
-                thousands_comma = thousands_comma or text
+                self.thousands_comma = self.thousands_comma or text
             elif re.fullmatch(r"[1-9]\d{0,2},\d{3}", text):
-                unclear = unclear or text
+                self.unclear = self.unclear or text
             elif re.fullmatch(r"\d*,\d*", text):
-                decimal_comma = decimal_comma or text
-    if decimal_comma and (thousands_comma or plain_dot):
-        other = thousands_comma or "a decimal point"
-        raise InputError(
-            f"Numbers are written both with a decimal comma ('{decimal_comma}') and with {other!r}",
-            remedy="write all of them one way, or say which with decimal=',' or decimal='.'",
-        )
-    if decimal_comma:
-        return Marks(",", ".")
-    if unclear and not (thousands_comma or plain_dot):
-        raise InputError(
-            f"'{unclear}' can be a thousand or a decimal number",
-            remedy="say which with decimal=',' or decimal='.'",
-        )
-    return Marks(".", "," if unclear or thousands_comma else "")
+                self.decimal_comma = self.decimal_comma or text

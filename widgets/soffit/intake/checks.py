@@ -9,6 +9,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from soffit.errors import InputError
+from soffit.intake.columns import column_blocks
 from soffit.intake.options import Frequency, Role
 from soffit.intake.periods import month_text
 from soffit.intake.quality import check_late_starters, check_survivors
@@ -156,28 +157,31 @@ def check_copies(names: list[str], x: Floats, factors: list[str], f: Floats, rec
         If an asset equals a factor on all their dates.
     """
     seen: dict[bytes, str] = {}
-    for position, name in enumerate(names):
-        held = ~np.isnan(x[:, position])
-        if held.sum() < 2:
-            continue
-        off = np.abs(x[held, position][:, None] - f[held]).max(axis=0, initial=0.0)
-        for k in np.flatnonzero(off < _EQUAL):
-            raise InputError(
-                f"The asset '{name}' equals the factor '{factors[k]}' on every date: "
-                "its alpha would be zero by construction",
-                remedy=f"ignore one of them, such as roles={{'{name}': 'ignored'}}",
-            )
-        key = (np.round(x[:, position], 12) + 0.0).tobytes()
-        if key in seen:
-            record.add(
-                EntryKind.COPIES,
-                f"The asset '{name}' is a copy of '{seen[key]}'; both were kept, and no joint "
-                "test exists with both.",
-                Severity.WARNING,
-                series=[seen[key], name],
-                rows=len(x),
-            )
-        seen.setdefault(key, name)
+    for span in column_blocks(len(names)):
+        block = x[:, span]
+        held = (~np.isnan(block)).sum(axis=0)
+        for k, factor in enumerate(factors):
+            off = np.fmax.reduce(np.abs(block - f[:, k : k + 1]), axis=0)
+            for i in np.flatnonzero((off < _EQUAL) & (held > 1)).tolist():
+                asset = names[span][i]
+                raise InputError(
+                    f"The asset '{asset}' equals the factor '{factor}' on every date: "
+                    "its alpha would be zero by construction",
+                    remedy=f"ignore one of them, such as roles={{'{asset}': 'ignored'}}",
+                )
+        rounded = np.asfortranarray(np.round(block, 12) + 0.0)
+        for i, name in enumerate(names[span]):
+            key = rounded[:, i].tobytes()
+            if key in seen and held[i] > 1:
+                record.add(
+                    EntryKind.COPIES,
+                    f"The asset '{name}' is a copy of '{seen[key]}'; both were kept, and no joint "
+                    "test exists with both.",
+                    Severity.WARNING,
+                    series=[seen[key], name],
+                    rows=len(x),
+                )
+            seen.setdefault(key, name)
 
 
 @dataclass(frozen=True, eq=False)
@@ -245,7 +249,8 @@ def check_histories(
             series=lone,
             rows=len(lone),
         )
-    flat = [names[i] for i in range(len(names)) if spans.count[i] > 1 and _flat(x[:, i])]
+    range_ = np.fmax.reduce(x, axis=0) - np.fmin.reduce(x, axis=0)
+    flat = [names[i] for i in np.flatnonzero((spans.count > 1) & (range_ <= 1e-14))]
     if flat:
         record.add(
             EntryKind.CONSTANT,
@@ -256,7 +261,3 @@ def check_histories(
         )
     check_survivors(spans.first, spans.last, len(x), record)
     check_late_starters(x, spans.first, record)
-
-
-def _flat(x: Floats) -> bool:
-    return bool(np.nanmax(x) - np.nanmin(x) <= 1e-14)

@@ -9,6 +9,7 @@ from typing import Any
 import pandas as pd
 
 from soffit.errors import InputError
+from soffit.intake.progress import Tick
 from soffit.intake.sources import Limits, Source, check_cells, need_extra
 
 __all__ = ["check_query", "read_database", "read_duckdb"]
@@ -54,7 +55,7 @@ def check_query(query: str) -> str:
     return query.strip().rstrip(";").strip()
 
 
-def read_duckdb(path: Path, query: str, name: str, limits: Limits) -> pd.DataFrame:
+def read_duckdb(path: Path, query: str, name: str, limits: Limits, tick: Tick) -> pd.DataFrame:
     """Run a query on a DuckDB file opened for reading, with no way to other files.
 
     Raises
@@ -73,14 +74,14 @@ def read_duckdb(path: Path, query: str, name: str, limits: Limits) -> pd.DataFra
         ) as database:
             answer = database.execute(asked)
             columns = [item[0] for item in answer.description]
-            return _gathered(columns, answer.fetchmany, name, limits)
+            return _gathered(columns, answer.fetchmany, name, limits, tick)
     except duckdb.Error as error:
         raise InputError(
             f"The query on {name} failed: {error}", remedy="correct the query, or check the file"
         ) from error
 
 
-def read_database(url: str, source: Source, limits: Limits) -> tuple[pd.DataFrame, str]:
+def read_database(url: str, source: Source, limits: Limits, tick: Tick) -> tuple[pd.DataFrame, str]:
     """Run a query on the database behind a URL, in a transaction that is rolled back.
 
     Returns
@@ -121,9 +122,13 @@ def read_database(url: str, source: Source, limits: Limits) -> tuple[pd.DataFram
                 connection.exec_driver_sql("PRAGMA query_only = ON")
             elif engine.dialect.name == "postgresql":
                 connection.exec_driver_sql("SET TRANSACTION READ ONLY")
-            answer = connection.execute(sa.text(asked.replace(":", r"\:")))
+            answer = connection.exec_driver_sql(asked)
             frame = _gathered(
-                list(answer.keys()), lambda size: [tuple(row) for row in answer.fetchmany(size)], name, limits
+                list(answer.keys()),
+                lambda size: [tuple(row) for row in answer.fetchmany(size)],
+                name,
+                limits,
+                tick,
             )
             connection.rollback()
     except SQLAlchemyError as error:
@@ -136,10 +141,11 @@ def read_database(url: str, source: Source, limits: Limits) -> tuple[pd.DataFram
     return frame, name
 
 
-def _gathered(columns: list[str], fetch: Any, name: str, limits: Limits) -> pd.DataFrame:
+def _gathered(columns: list[str], fetch: Any, name: str, limits: Limits, tick: Tick) -> pd.DataFrame:
     rows: list[tuple[Any, ...]] = []
     while batch := fetch(_BATCH):
         rows.extend(batch)
+        tick(len(batch))
         check_cells(len(rows), len(columns), name, limits)
     frame = pd.DataFrame(rows, columns=pd.Index(columns, dtype=object))
     return frame.infer_objects()

@@ -16,7 +16,7 @@ from soffit.intake.checks import check_losses
 from soffit.intake.frequency import consecutive, tell_frequency, to_one_calendar
 from soffit.intake.options import Content, Excess, Frequency, Mismatch, Role, Units, choice, per_series
 from soffit.intake.panel import Panel
-from soffit.intake.progress import progress_bar
+from soffit.intake.progress import Tick, progress_bar
 from soffit.intake.quality import check_quality, drop_first_periods
 from soffit.intake.readers import read
 from soffit.intake.record import EntryKind, RecordBuilder
@@ -111,12 +111,13 @@ def open_panel(
         )
     raw_names = tuple(raw_factors)
     record = RecordBuilder()
-    raws = _read_all(returns, factors, risk_free, limits or Limits(), codes, record)
-    kinds = settle_roles(raws, stated_roles, _rate_name(risk_free, raws), raw_names, settled, record)
-    _known_names("units", told_units[1], kinds)
-    _known_names("content", told_content[1], kinds)
-    tables: list[Table] = []
-    with progress_bar(sum(len(raw.columns) for raw in raws), progress) as bar:
+    with progress_bar(progress) as bar:
+        raws = _read_all(returns, factors, risk_free, limits or Limits(), codes, record, bar.update)
+        kinds = settle_roles(raws, stated_roles, _rate_name(risk_free, raws), raw_names, settled, record)
+        _known_names("units", told_units[1], kinds)
+        _known_names("content", told_content[1], kinds)
+        bar.reset(sum(len(raw.columns) for raw in raws))
+        tables: list[Table] = []
         while raws:
             table = clean_table(raws.pop(0), kinds, codes, record, bar.update)
             tell_frequency(table, asked, record)
@@ -140,11 +141,17 @@ def _excess_choice(excess: bool | Excess | str | None) -> Excess:
 
 
 def _read_all(
-    returns: Any, factors: Any, risk_free: Any, limits: Limits, missing: Missing, record: RecordBuilder
+    returns: Any,
+    factors: Any,
+    risk_free: Any,
+    limits: Limits,
+    missing: Missing,
+    record: RecordBuilder,
+    tick: Tick,
 ) -> list[RawTable]:
-    raws = [read(returns, "returns", limits, missing)]
+    raws = [read(returns, "returns", limits, missing, tick)]
     if factors is not None:
-        raws.append(read(factors, "factors", limits, missing))
+        raws.append(read(factors, "factors", limits, missing, tick))
     if isinstance(risk_free, pd.Series):
         raws.append(read(risk_free.to_frame(str(risk_free.name or "RF")), "risk-free", limits, missing))
     elif risk_free is not None and not isinstance(risk_free, str):

@@ -9,15 +9,15 @@ from typing import Any
 import numpy as np
 
 from soffit.errors import InputError, nearest
+from soffit.intake.columns import column_blocks
+from soffit.intake.progress import Tick
 from soffit.intake.record import EntryKind
 from soffit.intake.sources import DATE_NAMES, Limits, RawTable, Source, check_cells, clean_names, need_extra
 
 __all__ = ["read_parquet"]
 
-_AT_ONCE = 256
 
-
-def read_parquet(path: Path, name: str, source: Source, limits: Limits) -> RawTable:
+def read_parquet(path: Path, name: str, source: Source, limits: Limits, tick: Tick) -> RawTable:
     """Read a Parquet file.
 
     Raises
@@ -38,21 +38,31 @@ def read_parquet(path: Path, name: str, source: Source, limits: Limits) -> RawTa
         ) from error
     with file:
         schema = file.schema_arrow
+        names, types = list(schema.names), list(schema.types)
         rows = int(file.metadata.num_rows)
-        check_cells(rows, len(schema.names), name, limits)
+        check_cells(rows, len(names), name, limits)
         if rows == 0:
             raise InputError(f"{name} has no rows", remedy="check how it was made")
         dated, remark = _date_column(schema, name, source)
-        kept = [position for position in range(len(schema.names)) if position != dated]
-        labels, _ = clean_names([schema.names[position] for position in kept], name)
+        kept = [position for position in range(len(names)) if position != dated]
+        labels, _ = clean_names([names[position] for position in kept], name)
         if not labels:
             raise InputError(f"{name} has dates but no columns of numbers", remedy="check how it was made")
+        plain = [pa.types.is_floating(types[position]) for position in kept]
+        block = np.empty((rows, sum(plain)), order="F")
         columns: dict[str, Any] = {}
-        for start in range(0, len(kept), _AT_ONCE):
-            part = file.read(columns=[schema.names[position] for position in kept[start : start + _AT_ONCE]])
-            for offset, label in enumerate(labels[start : start + _AT_ONCE]):
-                columns[label] = _cells(part.column(offset))
-        dates = _cells(file.read(columns=[schema.names[dated]]).column(0))
+        filled = 0
+        for span in column_blocks(len(kept)):
+            part = file.read(columns=[names[position] for position in kept[span]])
+            for cells, label, is_plain in zip(part.columns, labels[span], plain[span], strict=True):
+                if is_plain:
+                    columns[label] = block[:, filled]
+                    columns[label][:] = cells.to_numpy()
+                    filled += 1
+                else:
+                    columns[label] = _cells(cells)
+            tick(len(labels[span]))
+        dates = _cells(file.read(columns=[names[dated]]).column(0))
     table = RawTable(name, columns, dates, np.arange(1, rows + 1, dtype=np.int64), "row", rows_in=rows)
     if remark:
         table.note(EntryKind.DATES, remark)
@@ -60,16 +70,14 @@ def read_parquet(path: Path, name: str, source: Source, limits: Limits) -> RawTa
 
 
 def _cells(column: Any) -> Any:
-    """An array of its own, so that the file's buffers can go."""
+    """Text, whole numbers and dates, as pandas reads them."""
     cells = column.to_pandas()
-    if isinstance(cells.dtype, np.dtype) and cells.dtype.kind in "fiu":
-        return np.array(cells, dtype=float)
-    return cells.array
+    return cells.to_numpy() if isinstance(cells.dtype, np.dtype) else cells.array
 
 
 def _date_column(schema: Any, name: str, source: Source) -> tuple[int, str]:
     """Position of the dates, and what to say about it."""
-    import pyarrow.types as types
+    from pyarrow import types
 
     names = list(schema.names)
     if source.date is not None:

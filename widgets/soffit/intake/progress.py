@@ -1,29 +1,35 @@
-"""A progress bar for readings that take longer than a second."""
+"""Progress of readings that take longer than a second."""
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any
 
-__all__ = ["progress_bar"]
+__all__ = ["Tick", "progress_bar", "quiet"]
+
+Tick = Callable[[int], object]
+"""Called with the number of lines, rows or series that were just dealt with."""
 
 _DELAY = 1.0
 
 
-def progress_bar(total: int, shown: bool) -> Any:
-    """A bar over columns that shows itself after a second, in a terminal or a notebook.
+def quiet(count: int) -> None:
+    """A tick that shows nothing."""
+
+
+def progress_bar(shown: bool) -> Any:
+    """A bar that shows itself after a second, in a terminal or a notebook.
 
     Parameters
     ----------
-    total : int
-        Number of columns to come.
     shown : bool
         Whether it may show at all.
 
     Returns
     -------
     tqdm
-        A context manager with ``update()``.
+        A context manager with ``update(count)`` and ``reset(total)``.
     """
     from tqdm.auto import tqdm
 
-    return tqdm(total=total, desc="Reading", unit="series", delay=_DELAY, leave=False, disable=not shown)
+    return tqdm(desc="Reading", delay=_DELAY, leave=False, disable=not shown)

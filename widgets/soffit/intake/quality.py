@@ -2,17 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 from numpy.typing import NDArray
 
+from soffit.intake.columns import column_blocks, column_medians, longest_run
 from soffit.intake.options import Frequency, Role
 from soffit.intake.periods import month_text
 from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
 from soffit.intake.tables import Table
 
-__all__ = ["check_late_starters", "check_quality", "check_survivors", "column_blocks", "drop_first_periods"]
+__all__ = ["check_late_starters", "check_quality", "check_survivors", "drop_first_periods"]
 
 Floats = NDArray[np.float64]
 
@@ -32,100 +33,81 @@ _MAD_TO_SIGMA = 1.482602218505602
 _EARLY = 12
 
 
-def column_blocks(count: int, width: int = 256) -> Iterator[slice]:
-    """Slices over columns, so that temporaries stay small whatever the number of series."""
-    for start in range(0, count, width):
-        yield slice(start, min(start + width, count))
-
-
 def check_quality(table: Table, roles: Mapping[str, Role], record: RecordBuilder) -> None:
     """Flag constant stretches, stale prices and outliers of assets and factors, and odd rates."""
     frequency = table.frequency or Frequency.MONTHLY
-    runs: dict[str, str] = {}
-    stale: dict[str, str] = {}
-    far: dict[str, str] = {}
-    counts = [0, 0]
     for position, name in enumerate(table.names):
-        x = table.values[:, position]
         if roles[name] is Role.RISK_FREE:
             _check_rate(table, position, frequency, record)
-        if roles[name] not in (Role.ASSET, Role.FACTOR):
-            continue
-        held = np.flatnonzero(~np.isnan(x))
-        y = x[held]
-        if len(y) < 3 or bool((y == y[0]).all()):
-            continue
-        start, length = _longest_run(y)
-        if length >= _RUN[frequency]:
-            runs[name] = f"{length} from {month_text(table.stamps[held[start]], frequency)}"
-            counts[0] += length
-        sign = _staleness(y)
-        if sign:
-            stale[name] = sign
-        outliers = _outliers(y, _FAR.get(frequency, _FAR_OTHERWISE))
-        if len(outliers):
-            first = held[outliers[0]]
-            more = f" and {len(outliers) - 1} more" if len(outliers) > 1 else ""
-            far[name] = f"{x[first]:.1%} in {month_text(table.stamps[first], frequency)}{more}"
-            counts[1] += len(outliers)
-    _flag(
-        record,
-        table,
-        EntryKind.CONSTANT,
-        "The same return again and again",
-        runs,
-        counts[0],
-        f"{frequency.noun}s",
-    )
-    _flag(record, table, EntryKind.STALE, "Signs of stale prices", stale, len(stale), "")
-    _flag(
-        record, table, EntryKind.OUTLIERS, "Far from the rest of their series, and kept", far, counts[1], ""
-    )
+    watched = [i for i, name in enumerate(table.names) if roles[name] in (Role.ASSET, Role.FACTOR)]
+    runs: dict[str, tuple[str, int]] = {}
+    stale: dict[str, tuple[str, int]] = {}
+    far: dict[str, tuple[str, int]] = {}
+    for span in column_blocks(len(watched)):
+        names = [table.names[i] for i in watched[span]]
+        x = table.values[:, watched[span]]
+        runs |= _runs(x, names, table, frequency)
+        stale |= _stale(x, names)
+        far |= _outliers(x, names, table, frequency)
+    again = f"The same return again and again ({frequency.noun}s)"
+    _flag(record, table, EntryKind.CONSTANT, again, runs)
+    _flag(record, table, EntryKind.STALE, "Signs of stale prices", stale)
+    _flag(record, table, EntryKind.OUTLIERS, "Far from the rest of their series, and kept", far)
 
 
 def _flag(
-    record: RecordBuilder,
-    table: Table,
-    kind: EntryKind,
-    what: str,
-    found: Mapping[str, str],
-    rows: int,
-    unit: str,
+    record: RecordBuilder, table: Table, kind: EntryKind, what: str, found: Mapping[str, tuple[str, int]]
 ) -> None:
     if found:
-        shown = [f"'{name}' ({text})" for name, text in found.items()]
+        shown = listed([f"'{name}' ({text})" for name, (text, _) in found.items()], quote="")
+        rows = sum(count for _, count in found.values())
         record.add(
-            kind,
-            f"{what}{f' ({unit})' if unit else ''}: {listed(shown, quote='')}.",
-            Severity.WARNING,
-            series=list(found),
-            rows=rows,
-            source=table.source,
+            kind, f"{what}: {shown}.", Severity.WARNING, series=list(found), rows=rows, source=table.source
         )
 
 
-def _longest_run(y: Floats) -> tuple[int, int]:
-    """Start and length of the longest stretch of equal values."""
-    edges = np.flatnonzero(np.concatenate([[True], y[1:] != y[:-1], [True]]))
-    lengths = np.diff(edges)
-    longest = int(lengths.argmax())
-    return int(edges[longest]), int(lengths[longest])
+def _runs(x: Floats, names: Sequence[str], table: Table, frequency: Frequency) -> dict[str, tuple[str, int]]:
+    """Stretches of one and the same value."""
+    found: dict[str, tuple[str, int]] = {}
+    least = _RUN[frequency]
+    for i in np.flatnonzero((x[1:] == x[:-1]).sum(axis=0) >= least - 1).tolist():
+        start, length = longest_run(x[:, i])
+        if length >= least:
+            found[names[i]] = f"{length} from {month_text(table.stamps[start], frequency)}", length
+    return found
 
 
-def _staleness(y: Floats) -> str:
-    zeros = float((y == 0).mean())
-    if zeros >= _ZERO_SHARE and len(y) >= 10:
-        return f"{zeros:.0%} of the returns are zero"
-    z = y - y.mean()
-    rho = float(z[1:] @ z[:-1] / (z @ z))
-    return f"autocorrelation {rho:.2f}" if rho > _AUTOCORRELATION and rho > 3.0 / np.sqrt(len(y)) else ""
+def _stale(x: Floats, names: Sequence[str]) -> dict[str, tuple[str, int]]:
+    """Many zeros, or returns that follow one another."""
+    held = ~np.isnan(x)
+    count = np.maximum(held.sum(axis=0), 1)
+    zeros = (x == 0).sum(axis=0)
+    z = np.where(held, x, 0.0)
+    z = np.where(held, z - z.sum(axis=0) / count, 0.0)
+    power = np.einsum("ti,ti->i", z, z)
+    rho = np.einsum("ti,ti->i", z[1:], z[:-1]) / np.where(power > 0, power, 1.0)
+    found: dict[str, tuple[str, int]] = {}
+    for i in np.flatnonzero((zeros >= _ZERO_SHARE * count) & (count >= 10)).tolist():
+        found[names[i]] = f"{zeros[i] / count[i]:.0%} of the returns are zero", int(zeros[i])
+    for i in np.flatnonzero((rho > _AUTOCORRELATION) & (rho > 3.0 / np.sqrt(count))).tolist():
+        found.setdefault(names[i], (f"autocorrelation {rho[i]:.2f}", int(count[i])))
+    return found
 
 
-def _outliers(y: Floats, far: float) -> NDArray[np.intp]:
-    """Positions more than `far` robust standard deviations from the median."""
-    off = np.abs(y - np.median(y))
-    scale = _MAD_TO_SIGMA * float(np.median(off))
-    return np.flatnonzero(off > far * scale) if scale > 0 else np.flatnonzero(off < 0)
+def _outliers(
+    x: Floats, names: Sequence[str], table: Table, frequency: Frequency
+) -> dict[str, tuple[str, int]]:
+    """Values many robust standard deviations from their median."""
+    off = np.abs(x - column_medians(x))
+    bound = _FAR.get(frequency, _FAR_OTHERWISE) * _MAD_TO_SIGMA * column_medians(off)
+    beyond = (off > bound) & (bound > 0)
+    found: dict[str, tuple[str, int]] = {}
+    for i in np.flatnonzero(beyond.any(axis=0)).tolist():
+        row = int(beyond[:, i].argmax())
+        count = int(beyond[:, i].sum())
+        more = f" and {count - 1} more" if count > 1 else ""
+        found[names[i]] = f"{x[row, i]:.1%} in {month_text(table.stamps[row], frequency)}{more}", count
+    return found
 
 
 def _check_rate(table: Table, position: int, frequency: Frequency, record: RecordBuilder) -> None:

@@ -16,6 +16,7 @@ from soffit.intake.databases import read_database, read_duckdb
 from soffit.intake.dates import looks_like_dates
 from soffit.intake.layouts import widen
 from soffit.intake.parquet import read_parquet
+from soffit.intake.progress import Tick, quiet
 from soffit.intake.record import EntryKind, Severity, listed
 from soffit.intake.sources import (
     DATE_NAMES,
@@ -42,7 +43,7 @@ _REFUSED = {
 }
 
 
-def read(data: Any, slot: str, limits: Limits, missing: Missing) -> RawTable:
+def read(data: Any, slot: str, limits: Limits, missing: Missing, tick: Tick = quiet) -> RawTable:
     """Read a source into a wide table.
 
     Parameters
@@ -55,6 +56,8 @@ def read(data: Any, slot: str, limits: Limits, missing: Missing) -> RawTable:
         The largest source that is read.
     missing : Missing
         What stands for no value, needed where the values of a long table are read.
+    tick : callable
+        Called with the number of lines, rows or series just read.
 
     Raises
     ------
@@ -68,9 +71,9 @@ def read(data: Any, slot: str, limits: Limits, missing: Missing) -> RawTable:
     if isinstance(held, pd.DataFrame):
         table = read_frame(held, source.name or f"{slot} frame", source, limits)
     elif isinstance(held, str) and "://" in held:
-        table = read_frame(*read_database(held, source, limits), source, limits)
+        table = read_frame(*read_database(held, source, limits, tick), source, limits)
     elif isinstance(held, (str, os.PathLike)):
-        table = _read_path(Path(held), source, limits)
+        table = _read_path(Path(held), source, limits, tick)
     else:
         raise InputError(
             f"{slot} is a {type(held).__name__}", allowed="a path, a DataFrame, a database URL or a Source"
@@ -85,7 +88,7 @@ def read(data: Any, slot: str, limits: Limits, missing: Missing) -> RawTable:
     return widen(table, source, missing)
 
 
-def _read_path(path: Path, source: Source, limits: Limits) -> RawTable:
+def _read_path(path: Path, source: Source, limits: Limits, tick: Tick) -> RawTable:
     check_file(path, limits)
     name = source.name or path.name
     ending = path.suffix.lower()
@@ -96,17 +99,17 @@ def _read_path(path: Path, source: Source, limits: Limits) -> RawTable:
             f"Files that end in '{ending}' are not read ('{path.name}')", remedy=_REFUSED[ending]
         )
     if source.query is not None:
-        table = read_frame(read_duckdb(path, source.query, name, limits), name, source, limits)
+        table = read_frame(read_duckdb(path, source.query, name, limits, tick), name, source, limits)
     elif ending in (".parquet", ".pq"):
-        table = read_parquet(path, name, source, limits)
+        table = read_parquet(path, name, source, limits, tick)
     elif ending in (".xlsx", ".xlsm"):
-        table = read_workbook(path, name, source, limits)
+        table = read_workbook(path, name, source, limits, tick)
     elif ending in (".duckdb", ".db", ".sqlite"):
         raise InputError(
             f"'{path.name}' is a database", remedy="say what to read with Source(path, query='SELECT ...')"
         )
     else:
-        table = read_text_file(path, name, source, limits)
+        table = read_text_file(path, name, source, limits, tick)
     with path.open("rb") as file:
         table.fingerprint = hashlib.file_digest(file, "sha256").hexdigest()
     return table

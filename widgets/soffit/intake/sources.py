@@ -62,8 +62,8 @@ class Limits:
         Size of a file, and of a packed file once unpacked.
     """
 
-    cells: int = 60_000_000
-    file_bytes: int = 2_000_000_000
+    cells: int = 30_000_000
+    file_bytes: int = 1_000_000_000
 
 
 @dataclass(frozen=True, eq=False)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -13,6 +13,7 @@ from soffit.intake.cells import Column, Missing, detect_marks, is_numeric, read_
 from soffit.intake.dates import read_dates
 from soffit.intake.options import Frequency, Role
 from soffit.intake.periods import month_text
+from soffit.intake.progress import Tick
 from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
 from soffit.intake.sources import RawTable
 
@@ -83,7 +84,7 @@ def clean_table(
     roles: Mapping[str, Role],
     missing: Missing,
     record: RecordBuilder,
-    step: Callable[[], object],
+    tick: Tick,
 ) -> Table:
     """Dates and numbers of a raw table, sorted, with exact duplicates merged.
 
@@ -99,8 +100,8 @@ def clean_table(
         What stands for no value.
     record : RecordBuilder
         Where everything is said.
-    step : callable
-        Called after each column.
+    tick : callable
+        Called after each series.
 
     Raises
     ------
@@ -122,7 +123,7 @@ def clean_table(
         if column.missing or column.repairs or column.percent_signs:
             column.values = values[:0, 0]
             told[name] = column
-        step()
+        tick(1)
     _report_cells(told, raw.source, record)
     signs = set(names) if raw.signs else {name for name, column in told.items() if column.percent_signs}
     table = Table(raw.source, names, values, dates.stamps, raw.rows, raw.row_word, dates.told, signs)

@@ -13,13 +13,14 @@ import numpy as np
 from soffit.errors import InputError, nearest
 from soffit.intake.cells import MISSING_TEXTS
 from soffit.intake.dates import looks_like_dates
+from soffit.intake.progress import Tick
 from soffit.intake.record import EntryKind, Severity, listed
 from soffit.intake.sources import DATE_NAMES, Limits, RawTable, Source, check_cells, clean_names
 
 __all__ = ["Line", "read_text_file", "table_of"]
 
 _DELIMITERS = ("\t", ";", "|", ",")
-_SAMPLE = 400
+_SAMPLE = 200_000
 _LOOK = 40
 _NUMBER = re.compile(r"[(+-]?[\d.,]+(?:e[+-]?\d+)?%?\)?", re.IGNORECASE | re.ASCII)
 _FORMS = "dates such as 1990-03-31, 1990-03, 199003, 31/03/1990 or 31 Mar 1990"
@@ -84,7 +85,7 @@ class _Layout:
         return line if fields is line.fields else Line(line.number, fields)
 
 
-def read_text_file(path: Path, name: str, source: Source, limits: Limits) -> RawTable:
+def read_text_file(path: Path, name: str, source: Source, limits: Limits, tick: Tick) -> RawTable:
     """Read a delimited text file.
 
     Raises
@@ -94,7 +95,7 @@ def read_text_file(path: Path, name: str, source: Source, limits: Limits) -> Raw
     """
     text, encoding = _decoded(path, source.encoding)
     delimiter = source.delimiter if source.delimiter is not None else _delimiter(text)
-    table = table_of(_lines(text, delimiter, name), name, source, limits, "line")
+    table = table_of(_lines(text, delimiter, name, limits, tick), name, source, limits, "line")
     if encoding not in ("utf-8", "ascii") and source.encoding is None:
         table.note(EntryKind.SOURCE, f"The file is not UTF-8; it was read as {encoding}.")
     if delimiter != "," and source.delimiter is None:
@@ -178,7 +179,9 @@ def _decoded(path: Path, encoding: str | None) -> tuple[str, str]:
 
 
 def _delimiter(text: str) -> str:
-    sample = [line for line in text.splitlines()[:_SAMPLE] if line.strip()]
+    sample = [line for line in text[:_SAMPLE].splitlines() if line.strip()]
+    if len(text) > _SAMPLE and len(sample) > 1:
+        sample.pop()
     best, score = " ", 0
     for candidate in _DELIMITERS:
         widths = [len(row) for row in csv.reader(sample, delimiter=candidate, skipinitialspace=True)]
@@ -188,8 +191,10 @@ def _delimiter(text: str) -> str:
     return best
 
 
-def _lines(text: str, delimiter: str, name: str) -> list[Line]:
+def _lines(text: str, delimiter: str, name: str, limits: Limits, tick: Tick) -> list[Line]:
     raw = text.splitlines()
+    if text.count(delimiter) > limits.cells:
+        check_cells(len(raw), text.count(delimiter) // max(len(raw), 1) + 1, name, limits)
     if delimiter == " ":
         return [Line(number, tuple(line.split())) for number, line in enumerate(raw, start=1)]
     if len(delimiter) != 1:
@@ -199,6 +204,7 @@ def _lines(text: str, delimiter: str, name: str) -> list[Line]:
     try:
         for row in reader:
             lines.append(Line(reader.line_num, tuple(map(str.strip, row))))
+            tick(1)
     except csv.Error as error:
         raise InputError(
             f"Line {reader.line_num} of {name} cannot be split into fields ({error})",

@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from soffit.errors import InputError
+from soffit.intake.columns import column_blocks, column_medians
 from soffit.intake.options import Content, Frequency, Role, Units
 from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
 from soffit.intake.tables import PRICES, Table
@@ -38,8 +40,11 @@ def mark_prices(
         If a column could be prices or returns, or a price is not positive.
     """
     default, named = declared
+    positive = np.fmin.reduce(table.values, axis=0) > 0
     for position, name in enumerate(table.names):
         told = named.get(name, default)
+        if told is Content.DETECT and not positive[position]:
+            continue
         if roles[name] in (Role.NON_TRADED, Role.RISK_FREE) and name not in named:
             continue
         if (_content(table, position) if told is Content.DETECT else told) is not Content.PRICES:
@@ -56,8 +61,6 @@ def mark_prices(
 
 def _content(table: Table, position: int) -> Content:
     x = table.values[:, position]
-    if bool((x <= 0).any()):
-        return Content.RETURNS
     x = x[~np.isnan(x)]
     if len(x) < _LEAST or table.names[position] in table.signs:
         return Content.RETURNS
@@ -144,6 +147,7 @@ def settle_units(
     default, named = declared
     found: dict[str, Units] = {}
     unclear: list[str] = []
+    sizes = _sizes(table)
     for position, name in enumerate(table.names):
         told = named.get(name, default)
         if roles[name] is Role.NON_TRADED and told is Units.DETECT:
@@ -155,7 +159,7 @@ def settle_units(
         elif name in table.signs:
             found[name] = Units.PERCENT
         else:
-            unit = _unit(table, position, roles[name])
+            unit = _unit(table, position, roles[name], sizes)
             if unit is None:
                 unclear.append(name)
             else:
@@ -165,23 +169,43 @@ def settle_units(
     return found
 
 
-def _unit(table: Table, position: int, role: Role) -> Units | None:
+@dataclass(frozen=True, eq=False)
+class _Sizes:
+    """Medians of the absolute values of all columns: of all values, and of those that are not zero."""
+
+    all_values: Floats
+    not_zero: Floats
+    negative: Floats
+
+
+def _sizes(table: Table) -> _Sizes:
+    count = len(table.names)
+    sizes = _Sizes(np.empty(count), np.empty(count), np.empty(count))
+    for span in column_blocks(count):
+        x = table.values[:, span]
+        size = np.abs(x)
+        sizes.all_values[span] = column_medians(size)
+        sizes.not_zero[span] = column_medians(np.where(size > 0, size, np.nan))
+        sizes.negative[span] = (x < 0).sum(axis=0) / np.maximum((~np.isnan(x)).sum(axis=0), 1)
+    return sizes
+
+
+def _unit(table: Table, position: int, role: Role, sizes: _Sizes) -> Units | None:
     """The unit of one column by its size; None when it could be either."""
-    x = table.values[:, position]
-    x = x[~np.isnan(x)]
-    size = np.abs(x)
-    if not (size > 0).any():
+    if np.isnan(sizes.not_zero[position]):
         return None
+    x = table.values[:, position]
     per_year = (table.frequency or Frequency.MONTHLY).periods_per_year
-    if role is Role.RISK_FREE or _like_a_rate(x):
+    if role is Role.RISK_FREE or (sizes.negative[position] <= 0.05 and _like_a_rate(x[~np.isnan(x)])):
         # Rates do not scale with the root of time, and a low rate in per cent looks like a high one in decimals.
-        yearly = float(np.median(size)) * per_year
+        yearly = float(sizes.all_values[position]) * per_year
         return Units.DECIMAL if 0 < yearly < 0.04 else Units.PERCENT if yearly > 0.5 else None
-    middle = float(np.median(size[size > 0])) * np.sqrt(per_year / 12)
+    middle = float(sizes.not_zero[position]) * np.sqrt(per_year / 12)
     if middle > _BEYOND_PERCENT:
         name = table.names[position]
         raise InputError(
-            f"Column '{name}' of {table.source} is too large for returns in per cent (median {np.median(size):g})",
+            f"Column '{name}' of {table.source} is too large for returns in per cent "
+            f"(median {sizes.all_values[position]:g})",
             remedy=f"say what it is: content={{'{name}': 'prices'}}, units={{'{name}': 'basis points'}} or "
             f"roles={{'{name}': 'non-traded factor'}}",
         )
@@ -192,13 +216,8 @@ def _unit(table: Table, position: int, role: Role) -> Units | None:
 
 
 def _like_a_rate(x: Floats) -> bool:
-    """Whether a column hardly moves from one period to the next and is hardly ever negative, as cash does."""
-    steps = np.abs(np.diff(x))
-    return (
-        len(x) >= _LEAST
-        and float((x < 0).mean()) <= 0.05
-        and float(np.median(steps)) < 0.3 * float(np.median(x))
-    )
+    """Whether a column that is hardly ever negative also hardly moves from one period to the next, as cash does."""
+    return len(x) >= _LEAST and float(np.median(np.abs(np.diff(x)))) < 0.3 * float(np.median(x))
 
 
 def _neighbours(table: Table, found: dict[str, Units], unclear: list[str], record: RecordBuilder) -> None:

@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import Any
 
 from soffit.errors import InputError, nearest
+from soffit.intake.progress import Tick
 from soffit.intake.record import EntryKind, listed
 from soffit.intake.sources import Limits, RawTable, Source, check_bytes, check_cells, need_extra
 from soffit.intake.text_files import Line, table_of
@@ -15,7 +16,7 @@ from soffit.intake.text_files import Line, table_of
 __all__ = ["read_workbook"]
 
 
-def read_workbook(path: Path, name: str, source: Source, limits: Limits) -> RawTable:
+def read_workbook(path: Path, name: str, source: Source, limits: Limits, tick: Tick) -> RawTable:
     """Read one sheet of a workbook.
 
     Values are read, never formulas; a sheet that was not named is the first one.
@@ -40,7 +41,7 @@ def read_workbook(path: Path, name: str, source: Source, limits: Limits) -> RawT
         ) from error
     try:
         sheet = _sheet(book, source.sheet, name)
-        lines = _lines(sheet, name, limits)
+        lines = _lines(sheet, name, limits, tick)
         title, others = sheet.title, [one for one in book.sheetnames if one != sheet.title]
     finally:
         book.close()
@@ -69,7 +70,7 @@ def _sheet(book: Any, wanted: str | int | None, name: str) -> Any:
     return book[wanted]
 
 
-def _lines(sheet: Any, name: str, limits: Limits) -> list[Line]:
+def _lines(sheet: Any, name: str, limits: Limits, tick: Tick) -> list[Line]:
     lines: list[Line] = []
     cells = 0
     for number, row in enumerate(sheet.iter_rows(values_only=True), start=1):
@@ -80,6 +81,7 @@ def _lines(sheet: Any, name: str, limits: Limits) -> list[Line]:
         if cells > limits.cells:
             check_cells(number, len(fields), name, Limits(0, limits.file_bytes))
         lines.append(Line(number, tuple(fields)))
+        tick(1)
     width = max((len(line.fields) for line in lines), default=0)
     # A row that ends in empty cells is as wide as the rest; a title or a footer is narrow on purpose.
     full = [line for line in lines if 2 * len(line.fields) >= width]
