@@ -65,6 +65,14 @@ def test_pages_are_whole_for_every_choice(key: str, change: dict[str, object]) -
         assert len(cells(table)) == len(table.frame) + 1
 
 
+@pytest.mark.parametrize("key", KEYS)
+@pytest.mark.parametrize("change", [{"assets": ("Hlth",)}, {"factors": ("MktRF",)}, {"factors": ()}], ids=str)
+def test_pages_of_one_asset_one_factor_or_none(us: Study, key: str, change: dict[str, object]) -> None:
+    exhibit = build(key, us.changed(change))
+    assert exhibit.finding.text.endswith(".")
+    assert not re.search(r"\bnan\b", exhibit.finding.text)
+
+
 def test_finding_of_the_walk_has_the_numbers_of_the_table(us: Study) -> None:
     walk = us.walk_forward()
     text = build("hedge-walk", us).finding.text

@@ -10,6 +10,7 @@ import pytest
 from tests.universes import INDUSTRIES
 
 from soffit.errors import EstimationError, SettingError
+from soffit.hedge.delivery import report_walk
 from soffit.hedge.walk_forward import WalkSchedule, walk_forward
 from soffit.hedge.weights import HedgeRule, hedge_ratios
 from soffit.settings import HedgeBeta, WindowKind
@@ -167,6 +168,18 @@ def test_spanned_asset_promises_and_delivers_nothing_but_alpha() -> None:
     np.testing.assert_allclose(walk.hedged, 0.001, atol=1e-14)
     np.testing.assert_allclose(walk.promised_mean, 0.001, atol=1e-14)
     np.testing.assert_allclose(walk.promised_variance, 0.0, atol=1e-25)
+
+
+def test_without_legs_the_hedged_return_is_the_return() -> None:
+    returns = np.random.default_rng(4).normal(0.01, 0.03, (80, 2))
+    walk = walk_forward(returns, np.empty((80, 0)), None, WalkSchedule(window=24, hold=3))
+    np.testing.assert_array_equal(walk.hedged, returns[24:])
+    np.testing.assert_allclose(walk.promised_variance[0], returns[:24].var(axis=0, ddof=1), rtol=1e-12)
+    report = report_walk(walk)
+    np.testing.assert_allclose(report.delivered.effectiveness, 0.0, atol=1e-15)
+    np.testing.assert_allclose(
+        report.gap.drift + report.gap.residual_risk + report.gap.promised, report.gap.delivered
+    )
 
 
 def test_bad_input_is_refused_with_the_reason() -> None:

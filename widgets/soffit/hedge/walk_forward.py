@@ -222,13 +222,14 @@ def walk_forward(
         step=schedule.hold,
         names=names,
     )
-    used = np.flatnonzero(fit.ends + schedule.lag + 1 < len(returns))
+    # Windows that end too late leave nothing to hedge; the rest come first.
+    used = slice(int((fit.ends + schedule.lag + 1 < len(returns)).sum()))
     starts = fit.ends[used] + schedule.lag + 1
     rows = np.arange(starts[0], len(returns), dtype=np.int64)
     held_by = (rows - starts[0]) // schedule.hold
     gram, centre = _factor_windows(factors, fit, used)
     targets, capped = _targets(returns, factors, rule, schedule, fit, used, gram, names)
-    plain = fit.beta[used]
+    plain = targets if rule.is_plain else fit.beta[used]
     growth = (1.0 + factors[rows])[:, None, :] / _asset_growth(returns, rates, rows, schedule.hold)[
         :, :, None
     ]
@@ -301,13 +302,13 @@ def _check(
         )
 
 
-def _factor_windows(factors: Floats, fit: RollingRegression, used: Ints) -> tuple[Floats, Floats]:
+def _factor_windows(factors: Floats, fit: RollingRegression, used: slice) -> tuple[Floats, Floats]:
     """Demeaned sums of squares (W, K, K) and means (W, K) of the factors in each window."""
     width = factors.shape[1]
-    gram, centre = np.empty((len(used), width, width)), np.empty((len(used), width))
-    for place, window in enumerate(used):
-        end = int(fit.ends[window]) + 1
-        inside = factors[end - int(fit.periods[window]) : end]
+    spans = list(zip(fit.ends[used], fit.periods[used], strict=True))
+    gram, centre = np.empty((len(spans), width, width)), np.empty((len(spans), width))
+    for place, (end, periods) in enumerate(spans):
+        inside = factors[end + 1 - periods : end + 1]
         centre[place] = inside.mean(axis=0)
         apart = inside - centre[place]
         gram[place] = apart.T @ apart
@@ -320,12 +321,12 @@ def _targets(
     rule: HedgeRule,
     schedule: WalkSchedule,
     fit: RollingRegression,
-    used: Ints,
+    used: slice,
     gram: Floats,
     names: Sequence[str],
 ) -> tuple[Floats, Bools]:
     if rule.is_plain:
-        return fit.beta[used], np.zeros((len(used), returns.shape[1]), dtype=bool)
+        return fit.beta[used], np.zeros((len(gram), returns.shape[1]), dtype=bool)
     lagged: Floats | None = None
     if rule.beta is HedgeBeta.DIMSON:
         # Lags stay inside the window: its first rows serve as lags only.
@@ -372,7 +373,7 @@ def _drift(targets: Floats, growth: Floats, held_by: Ints) -> tuple[Floats, Floa
 
 
 def _promises(
-    fit: RollingRegression, used: Ints, targets: Floats, gram: Floats, centre: Floats
+    fit: RollingRegression, used: slice, targets: Floats, gram: Floats, centre: Floats
 ) -> dict[str, Floats]:
     """Moments that each hedge shows in its own window."""
     beta, sigma = fit.beta[used], fit.sigma[used]

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import numpy as np
 import pandas as pd
 
 from soffit.estimate.statistic import NotApplicable
@@ -260,7 +259,6 @@ def mimicking_finding(found: Mimicking) -> Finding:
         else ""
     )
     count = plural(found.weights.shape[1], "base asset")
-    assert np.isfinite(found.r2).all()
     return Finding(
         f"Share of the variance of each non-traded factor that {count} span: {', '.join(parts)}.{tail}"
     )
