@@ -29,6 +29,7 @@ from soffit.study.hedge_walk import HedgeWalk
 from soffit.study.joint_test import JointTest
 from soffit.study.prices_of_risk import PricesOfRisk
 from soffit.study.sample import Sample
+from soffit.study.vintage import VintageEffect
 
 if TYPE_CHECKING:
     from soffit.intake import IntakeRecord
@@ -44,6 +45,7 @@ REGRESSION = (*SAMPLE, "error_type", "lag_rule", "lags", "reference", "level")
 PREMIA = (*SAMPLE, "lag_rule", "lags", "reference", "level")
 CROSS_SECTION = (
     *PREMIA,
+    "error_type",
     "cross_section.second_pass",
     "cross_section.constant",
     "cross_section.betas",
@@ -233,6 +235,21 @@ class Study:
             If a named factor is not in the panel.
         """
         return PricesOfRisk.of(self.sample(), self.settings, self.panel, non_traded)
+
+    def vintage(self, earlier: Any) -> VintageEffect:
+        """Hold the alphas against those on an earlier vintage of the factors.
+
+        Parameters
+        ----------
+        earlier : Panel, DataFrame or path
+            The earlier download of the same factors.
+
+        Raises
+        ------
+        InputError
+            If it cannot be read or lacks a factor of the study.
+        """
+        return VintageEffect.of(self.panel, self.settings, earlier)
 
     def characteristics(
         self,

@@ -13,6 +13,7 @@ __all__ = ["EXHIBITS", "build"]
 
 # Key of the exhibit and the module whose function ``exhibit(study)`` builds it, in the order of a memo.
 EXHIBITS: dict[str, str] = {
+    "intake": "soffit.present.exhibits.intake",
     "regression": "soffit.present.exhibits.regression",
     "joint": "soffit.present.exhibits.joint",
     "ceiling": "soffit.present.exhibits.ceiling",
