@@ -11,9 +11,10 @@ from tests.universes import SIZE_VALUE
 from soffit.errors import EstimationError, InputError, SettingError
 from soffit.estimate.characteristics import characteristic_premia
 from soffit.estimate.cross_section import PremiumError, two_pass
+from soffit.estimate.cross_section_gmm import gmm_pricing_test
 from soffit.estimate.rank import identification
 from soffit.estimate.statistic import NotApplicable
-from soffit.settings import BetaWindow, Histories, LagRule, Reference, SecondPass
+from soffit.settings import BetaWindow, ErrorType, Histories, LagRule, Reference, SecondPass
 from soffit.study import Study
 
 FF3 = ["MktRF", "SMB", "HML"]
@@ -101,6 +102,15 @@ def test_lag_settings_reach_the_errors(study: Study) -> None:
     assert fixed.fit.lags == 11
     assert automatic.fit.lags >= 0
     assert study.prices_of_risk().fit.lags == 4
+
+
+def test_gmm_takes_lags_with_hac_errors(study: Study, arrays: tuple[np.ndarray, np.ndarray]) -> None:
+    plain = study.prices_of_risk().statistics["Pricing errors, GMM"]
+    assert_allclose(plain.value, gmm_pricing_test(*arrays).value, rtol=1e-8)
+    lagged = study.changed(error_type=ErrorType.HAC, lag_rule=LagRule.FIXED, lags=5).prices_of_risk()
+    assert_allclose(lagged.gmm.value, gmm_pricing_test(*arrays, lags=5).value, rtol=1e-8)
+    rolling = study.changed({"cross_section.betas": BetaWindow.ROLLING}).prices_of_risk()
+    assert isinstance(rolling.gmm, NotApplicable)
 
 
 def test_computed_once_for_what_it_depends_on(study: Study) -> None:

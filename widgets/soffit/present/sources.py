@@ -27,6 +27,7 @@ SOURCES: dict[str, str] = {
     "fama-macbeth-1973": "Fama, E. F. and MacBeth, J. D. (1973). Risk, return, and equilibrium: empirical tests. Journal of Political Economy 81(3), 607–636.",
     "getmansky-lo-makarov-2004": "Getmansky, M., Lo, A. W. and Makarov, I. (2004). An econometric model of serial correlation and illiquidity in hedge fund returns. Journal of Financial Economics 74(3), 529–609.",
     "gibbons-ross-shanken-1989": "Gibbons, M. R., Ross, S. A. and Shanken, J. (1989). A test of the efficiency of a given portfolio. Econometrica 57(5), 1121–1152.",
+    "hansen-1982": "Hansen, L. P. (1982). Large sample properties of generalized method of moments estimators. Econometrica 50(4), 1029–1054.",
     "hansen-jagannathan-1991": "Hansen, L. P. and Jagannathan, R. (1991). Implications of security market data for models of dynamic economies. Journal of Political Economy 99(2), 225–262.",
     "hoerl-kennard-1970": "Hoerl, A. E. and Kennard, R. W. (1970). Ridge regression: biased estimation for nonorthogonal problems. Technometrics 12(1), 55–67.",
     "holm-1979": "Holm, S. (1979). A simple sequentially rejective multiple test procedure. Scandinavian Journal of Statistics 6(2), 65–70.",

@@ -14,10 +14,11 @@ from soffit.errors import SettingError, nearest
 from soffit.estimate.cross_section import PremiumError, TwoPass, two_pass
 from soffit.estimate.cross_section_errors import wald_test
 from soffit.estimate.cross_section_fit import R2Interval, r2_interval
+from soffit.estimate.cross_section_gmm import gmm_pricing_test
 from soffit.estimate.rank import Identification, identification
 from soffit.estimate.statistic import NotApplicable, TestStatistic
 from soffit.intake import Panel
-from soffit.settings import BetaWindow, LagRule, Reference, Settings
+from soffit.settings import BetaWindow, ErrorType, LagRule, Reference, Settings
 from soffit.study.sample import Block, Sample
 
 __all__ = ["CONSTANT", "PricesOfRisk", "newey_west_choice"]
@@ -54,7 +55,7 @@ class PricesOfRisk:
     identification : Identification
         Whether the betas identify the prices.
     settings : Settings
-        Level, reference distribution, bootstrap draws and seed.
+        Level, reference distribution, error type, bootstrap draws and seed.
     """
 
     sample: Sample
@@ -187,6 +188,21 @@ class PricesOfRisk:
         return wald_test(self.fit.gaps[:traded], covariance[:traded, :traded], name, null, source)
 
     @cached_property
+    def gmm(self) -> TestStatistic | NotApplicable:
+        """GMM test of the pricing errors, with Newey-West lags where the settings ask for HAC errors."""
+        if self.fit.window is not None:
+            return NotApplicable(
+                "Pricing errors, GMM", "it is known for full-sample betas only, and these betas roll"
+            )
+        return gmm_pricing_test(
+            self.block.returns,
+            self.factor_values,
+            second_pass=self.fit.second_pass,
+            constant=self.fit.constant,
+            lags=self.fit.lags if self.settings.error_type is ErrorType.HAC else 0,
+        )
+
+    @cached_property
     def r2_ols(self) -> R2Interval | NotApplicable:
         """OLS cross-sectional R² with its bootstrap interval."""
         return self._r2(generalised=False)
@@ -274,6 +290,7 @@ class PricesOfRisk:
         return {
             "Pricing errors, F": self.fit.pricing_f,
             "Pricing errors, χ²": self.fit.pricing_chi2,
+            "Pricing errors, GMM": self.gmm,
             "Prices of risk are factor means": self.gap_test,
             "Rank of betas, Cragg–Donald": self.identification.cragg_donald,
             "Rank of betas, Kleibergen–Paap": self.identification.kleibergen_paap,

@@ -30,7 +30,7 @@ from soffit.present.wording.prices_of_risk import (
     prices_finding,
     prices_sample_line,
 )
-from soffit.settings import LagRule
+from soffit.settings import ErrorType, LagRule
 from soffit.study import PricesOfRisk, Study
 
 __all__ = [
@@ -56,6 +56,7 @@ _FULL_SAMPLE_SOURCES = (
     "shanken-1992",
     "kan-robotti-shanken-2013",
     "lewellen-nagel-shanken-2010",
+    "hansen-1982",
 )
 
 
@@ -224,6 +225,10 @@ def premium_table(study: Study, prices: PricesOfRisk) -> TableSpec:
 def statistics_table(study: Study, prices: PricesOfRisk) -> TableSpec:
     """Tabulate tests of the model as a whole."""
     rows = []
+    lagged = prices.settings.error_type is ErrorType.HAC
+    allows = "heteroskedasticity" + (
+        f" and autocorrelation over {plural(prices.fit.lags, 'lag')}" if lagged else ""
+    )
     for test in prices.statistics.values():
         if isinstance(test, NotApplicable):
             null = f"does not exist: {test.reason}"
@@ -242,7 +247,8 @@ def statistics_table(study: Study, prices: PricesOfRisk) -> TableSpec:
         ),
         frame=pd.DataFrame(rows, index=list(prices.statistics)),
         index_heading="Test",
-        footnote=f"{prices_sample_line(study, prices)}. Tests of pricing errors carry Shanken's correction.",
+        footnote=f"{prices_sample_line(study, prices)}. The F and χ² tests of pricing errors carry "
+        f"Shanken's correction; the GMM test allows for {allows}.",
     )
 
 
