@@ -28,6 +28,7 @@ __all__ = ["consecutive", "tell_frequency", "to_one_calendar"]
 # column has at least this share of the period's rows. Common practice, no source.
 _LEAST_DATES = 12
 _LEAST_SHARE = 0.75
+_HALF = 0.5
 
 
 def tell_frequency(table: Table, declared: Frequency | None, record: RecordBuilder) -> None:
@@ -71,6 +72,7 @@ def tell_frequency(table: Table, declared: Frequency | None, record: RecordBuild
             source=table.source,
         )
         found = fine
+        table.mixed = True
     table.frequency = found
     table.slow = _slow_columns(table, found)
     for name, kind in table.slow.items():
@@ -215,7 +217,9 @@ def _compound(
             within = days if name in table.slow or roles[name] is Role.NON_TRADED else 1 - _LEAST_SHARE
             result[:, position], enough = _last_values(x, starts, size, within)
         else:
-            result[:, position] = np.multiply.reduceat(np.where(held, 1.0 + x, 1.0), starts) - 1.0
+            product = np.multiply.reduceat(np.where(held, 1.0 + x, 1.0), starts) - 1.0
+            alone = np.add.reduceat(np.where(held, x, 0.0), starts)
+            result[:, position] = np.where(counts == 1, alone, product)
             enough = counts >= (1 if name in table.slow else np.ceil(_LEAST_SHARE * size))
             if name not in table.slow and (enough & (counts < size)).any():
                 part[name] = int((enough & (counts < size)).sum())
@@ -269,14 +273,19 @@ def _say_thin(
 def _drop_part_periods(
     table: Table, size: NDArray[np.int64], source: Frequency, target: Frequency, record: RecordBuilder
 ) -> None:
-    """Drop a first or last period that the rows do not fill; a first one of prices is a good base all the same."""
+    """Drop periods that the rows do not fill: a first or last one short of a quarter, others short of a half.
+
+    A first period of prices stays, since its last price is a good base; so do the single rows of a coarser
+    stretch. Trading stops for a week now and then, so that a thin period inside is kept and said.
+    """
     priced = all(table.units.get(name) == PRICES for name in table.names)
-    usual = float(np.median(size))
-    keep = np.ones(len(size), dtype=bool)
+    judged = (size > 1) if table.mixed else np.ones(len(size), dtype=bool)
+    usual = float(np.median(size[judged])) if judged.any() else 1.0
+    keep = ~judged | (size >= _HALF * usual)
     for edge in (0, -1):
-        if len(size) > 2 and size[edge] < _LEAST_SHARE * usual and not (priced and edge == 0):
-            keep[edge] = False
-    for row in np.flatnonzero((size < _LEAST_SHARE * usual) & keep):
+        if len(size) > 2 and judged[edge] and size[edge] < _LEAST_SHARE * usual:
+            keep[edge] = priced and edge == 0
+    for row in np.flatnonzero(judged & keep & (size < _LEAST_SHARE * usual)):
         record.add(
             EntryKind.GAPS,
             f"{month_text(table.stamps[row], target)} has only {size[row]} {source.value} rows, "

@@ -111,13 +111,13 @@ def open_panel(
         )
     raw_names = tuple(raw_factors)
     record = RecordBuilder()
-    with progress_bar(progress) as bar:
+    with progress_bar("Reading", None, progress) as bar:
         raws = _read_all(returns, factors, risk_free, limits or Limits(), codes, record, bar.update)
-        kinds = settle_roles(raws, stated_roles, _rate_name(risk_free, raws), raw_names, settled, record)
-        _known_names("units", told_units[1], kinds)
-        _known_names("content", told_content[1], kinds)
-        bar.reset(sum(len(raw.columns) for raw in raws))
-        tables: list[Table] = []
+    kinds = settle_roles(raws, stated_roles, _rate_name(risk_free, raws), raw_names, settled, record)
+    _known_names("units", told_units[1], kinds)
+    _known_names("content", told_content[1], kinds)
+    tables: list[Table] = []
+    with progress_bar("Checking", sum(len(raw.columns) for raw in raws), progress) as bar:
         while raws:
             table = clean_table(raws.pop(0), kinds, codes, record, bar.update)
             tell_frequency(table, asked, record)

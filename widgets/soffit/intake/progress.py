@@ -17,19 +17,23 @@ def quiet(count: int) -> None:
     """A tick that shows nothing."""
 
 
-def progress_bar(shown: bool) -> Any:
+def progress_bar(what: str, total: int | None, shown: bool) -> Any:
     """A bar that shows itself after a second, in a terminal or a notebook.
 
     Parameters
     ----------
+    what : str
+        What is being done.
+    total : int, optional
+        How much there is of it, when that is known.
     shown : bool
         Whether it may show at all.
 
     Returns
     -------
     tqdm
-        A context manager with ``update(count)`` and ``reset(total)``.
+        A context manager with ``update(count)``.
     """
     from tqdm.auto import tqdm
 
-    return tqdm(desc="Reading", delay=_DELAY, leave=False, disable=not shown)
+    return tqdm(desc=what, total=total, delay=_DELAY, leave=False, disable=not shown)

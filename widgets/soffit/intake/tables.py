@@ -53,6 +53,8 @@ class Table:
         Set once it is known.
     slow : dict of str to Frequency
         Columns observed less often than the source.
+    mixed : bool
+        Whether a stretch of the rows goes at a coarser frequency than the rest.
     """
 
     source: str
@@ -66,6 +68,7 @@ class Table:
     units: dict[str, str] = field(default_factory=dict)
     frequency: Frequency | None = None
     slow: dict[str, Frequency] = field(default_factory=dict)
+    mixed: bool = False
 
     def place(self, row: int) -> str:
         """Where the analyst finds a row, with its date."""
