@@ -15,6 +15,7 @@ import pytest
 from soffit.hedge.book import make_book, with_market
 from soffit.hedge.ticket import Instrument, Order, hedge_ticket
 from soffit.hedge.weights import hedge_ratios
+from soffit.study import Study
 
 
 def _order(notional: float, ratio: float, instrument: Instrument) -> Order:
@@ -67,6 +68,13 @@ def test_hedged_industry_of_the_sixties(french: pd.DataFrame) -> None:
     np.testing.assert_allclose(hedge.effectiveness[0], 0.719904730333721, rtol=1e-9)
     np.testing.assert_allclose(hedged.mean(), 0.00279289742726448, rtol=1e-9)
     np.testing.assert_allclose(hedged.std(ddof=1), 0.0271489182567468, rtol=1e-9)
+    # The same through the study, whose table is annual.
+    study = Study.open(part[["BusEq", "RF"]], part[["MktRF"]], risk_free="RF")
+    row = study.hedge().table.loc["BusEq"]
+    np.testing.assert_allclose(row["ratio MktRF"], 1.19022536693311, rtol=1e-9)
+    np.testing.assert_allclose(row["alpha"], 0.00279289742726448 * 12, rtol=1e-9)
+    np.testing.assert_allclose(row["volatility"], 0.0272637133491322 * np.sqrt(12), rtol=1e-9)
+    np.testing.assert_allclose(row["effectiveness"], 0.719904730333721, rtol=1e-9)
 
 
 def test_active_portfolio_of_three_stocks() -> None:
