@@ -17,9 +17,11 @@ from soffit.errors import EstimationError, InputError, nearest
 from soffit.estimate.noncentral import nct_interval
 from soffit.estimate.regression import ErrorChoice, Regression, regress
 from soffit.estimate.sharpe import long_run_error
-from soffit.estimate.squared_sharpe import SquaredSharpe, squared_sharpe
+from soffit.estimate.squared_sharpe import SquaredSharpe, squared_sharpe, unbiased_squared_sharpe
 from soffit.estimate.statistic import Distribution, Family, NotApplicable, TestStatistic
+from soffit.judge.ceiling import AlphaTable
 from soffit.judge.joint import JointAlphas, joint_alphas
+from soffit.settings import CeilingForm
 
 __all__ = [
     "FactorSet",
@@ -79,16 +81,32 @@ class FactorSet:
         known = np.isfinite(r2)
         return float(r2[known].mean()) if known.any() else float("nan")
 
-    @property
-    def needed_alone(self) -> float:
-        """Ceiling that the largest alpha needs, its asset hedged alone, per period: max |AR|."""
-        ratio = np.abs(self.regression.appraisal)
-        return float(np.nanmax(ratio)) if np.isfinite(ratio).any() else float("nan")
+    @cached_property
+    def alphas(self) -> AlphaTable:
+        """The alphas as the ceiling takes them, per period."""
+        fit, count = self.regression, self.regression.count
+        return AlphaTable(
+            alpha=fit.alpha,
+            sigma=fit.sigma,
+            r2=fit.r2,
+            total=fit.total,
+            t_scale=np.full(count, fit.t_scale),
+            df=np.full(count, float(fit.fit.df)),
+            theta_f=np.full(count, fit.factors.theta),
+        )
 
-    @property
-    def needed_on_factors(self) -> float:
-        """Ceiling that the largest alpha needs on top of the factors, per period: √(max AR² + θf²)."""
-        return float(np.sqrt(self.needed_alone**2 + self.sharpe.plug_in))
+    def needed(self, form: CeilingForm) -> float | NotApplicable:
+        """Lowest ceiling that would sustain the estimated alphas, per period.
+
+        Parameters
+        ----------
+        form : CeilingForm
+            Which portfolio the ceiling binds: the largest of the assets' needs when taken one by one, θ* when taken
+            together.
+        """
+        if form is CeilingForm.TOGETHER:
+            return self.needed_together
+        return float(self.alphas.needed(form).max())
 
     @property
     def needed_together(self) -> float | NotApplicable:
@@ -127,7 +145,7 @@ class Spanning:
 
     @property
     def t(self) -> Floats:
-        """t ratios of the alphas, shape (K,)."""
+        """Ratios of the alphas to their errors, shape (K,)."""
         return self._each([float(each.fit.t[0, 0]) for each in self.regressions])
 
     @property
@@ -238,8 +256,8 @@ def spanning_regressions(
     Parameters
     ----------
     factors : ndarray, shape (T, K)
-        Excess returns of traded factors, decimal per period. With a single factor there are no others: its alpha is its
-        mean.
+        Excess returns of traded factors, decimal per period. With a single factor there are no others: its
+        alpha is its mean.
     names : sequence of str
         Their names.
     choice : ErrorChoice, optional
@@ -303,13 +321,13 @@ def equal_squared_sharpe(first: Floats, second: Floats, *, lags: int = 0) -> Tes
     values, influences = [], []
     for factors in (first, second):
         theta2, influence = _squared_sharpe_influence(factors)
-        values.append(squared_sharpe(theta2, factors.shape[1], periods).unbiased)
+        values.append(unbiased_squared_sharpe(theta2, factors.shape[1], periods))
         influences.append(influence)
     gap = influences[0] - influences[1]
     if float(np.abs(gap).max(initial=0.0)) < 1e-12:
         return NotApplicable(name, "the two sets have the same best combination")
     error = float(long_run_error(gap[:, None], np.array([lags]), np.array([periods]))[0])
-    ratio = (float(values[0]) - float(values[1])) / error  # type: ignore[arg-type]
+    ratio = (values[0] - values[1]) / error
     law = Distribution(Family.NORMAL)
     return TestStatistic(
         name,

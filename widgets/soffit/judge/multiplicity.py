@@ -13,7 +13,7 @@ from enum import StrEnum
 
 import numpy as np
 import numpy.typing as npt
-from scipy import stats
+from scipy import special, stats
 from statsmodels.stats.multitest import multipletests
 
 from soffit.errors import InputError, SettingError
@@ -67,15 +67,6 @@ class Hurdle(StrEnum):
     BONFERRONI = "Bonferroni"
     SIDAK = "Šidák"
 
-
-_METHODS = {
-    Adjustment.BONFERRONI: "bonferroni",
-    Adjustment.HOLM: "holm",
-    Adjustment.HOCHBERG: "simes-hochberg",
-    Adjustment.HOMMEL: "hommel",
-    Adjustment.BENJAMINI_HOCHBERG: "fdr_bh",
-    Adjustment.BENJAMINI_YEKUTIELI: "fdr_by",
-}
 
 _SOURCES = {
     Adjustment.BONFERRONI: "bonferroni-1936",
@@ -234,14 +225,30 @@ def adjusted_pvalues(pvalues: npt.ArrayLike, method: Adjustment, *, trials: int 
     (2001), Annals of Statistics 29.
     """
     p = _checked(pvalues)
-    there = np.isfinite(p)
+    there = np.flatnonzero(np.isfinite(p))
     out = np.full(p.shape, np.nan)
     tests = _tests(p, trials)
-    if there.any():
-        unseen = np.ones(tests - int(there.sum()))
-        padded = np.concatenate([p[there], unseen])
-        out[there] = multipletests(padded, method=_METHODS[method])[1][: int(there.sum())]
+    if there.size:
+        order = there[np.argsort(p[there], kind="stable")]
+        out[order] = np.minimum(_adjusted_sorted(p[order], method, tests), 1.0)
     return out
+
+
+def _adjusted_sorted(p: Floats, method: Adjustment, tests: int) -> Floats:
+    """Adjust ascending p-values; the unseen ones, all of them one, come last and bind nothing but the factor."""
+    # Not statsmodels' multipletests: it collects garbage at each call, which takes longer than a slider may.
+    if method is Adjustment.HOMMEL:
+        padded = np.concatenate([p, np.ones(tests - len(p))])
+        return np.asarray(multipletests(padded, method="hommel", is_sorted=True)[1][: len(p)], dtype=float)
+    rank = np.arange(1.0, len(p) + 1.0)
+    if method is Adjustment.BONFERRONI:
+        return tests * p
+    if method is Adjustment.HOLM:
+        return np.maximum.accumulate((tests - rank + 1.0) * p)
+    factor = tests - rank + 1.0 if method is Adjustment.HOCHBERG else tests / rank
+    if method is Adjustment.BENJAMINI_YEKUTIELI:
+        factor = factor * (special.digamma(tests + 1.0) + np.euler_gamma)
+    return np.minimum.accumulate((factor * p)[::-1])[::-1]
 
 
 def single_test_level(tests: int, level: float, kind: Hurdle = Hurdle.BONFERRONI) -> float:
