@@ -205,6 +205,26 @@ def a_remark_among_the_rows(a, f, d):
     return {"returns": text(d, "\n".join([*rows[:10], "checked by hand", *rows[10:]])), "factors": f}
 
 
+@refused("Line 11 of returns.csv ('see') interrupts the data")
+def a_wide_remark_among_the_rows(a, f, d):
+    rows = lines(a)
+    return {"returns": text(d, "\n".join([*rows[:10], "see,the,note,of,the,desk", *rows[10:]])), "factors": f}
+
+
+@repaired("2 lines that repeat the names among the data were passed over.", "1 blank lines among the data")
+def names_on_every_page(a, f, d):
+    rows = lines(a)
+    pages = [*rows[:20], rows[0], *rows[20:40], "", rows[0], *rows[40:]]
+    return {"returns": text(d, "\n".join(pages)), "factors": f}
+
+
+@refused("'x' in line 2 of returns.csv is not a date")
+def first_date_spoilt_under_names_without_one(a, f, d):
+    rows = lines(a)
+    rows[0], rows[1] = rows[0].removeprefix("date,"), "x" + rows[1].removeprefix("2001-01-31")
+    return {"returns": text(d, "\n".join(rows)), "factors": f}
+
+
 @repaired("2 blank lines among the data were passed over.")
 def blank_lines_among_the_rows(a, f, d):
     rows = lines(a)
@@ -604,6 +624,36 @@ def one_per_cent_sign(a, f, d):
 
 
 # --- units, prices, excess ---------------------------------------------------------------------------------------
+
+
+@refused("'Birch' of returns frame has per-cent signs but is declared decimal")
+def per_cent_signs_declared_decimal(a, f, d):
+    return {
+        "returns": a.assign(Birch=[f"{100 * x:.4f}%" for x in a["Birch"]]),
+        "factors": f,
+        "units": "decimal",
+    }
+
+
+@repaired("'Cedar': declared percent but decimal by their size; the declaration was followed.", same=False)
+def decimals_declared_per_cent(a, f, d):
+    return {"returns": a, "factors": f, "units": {"Cedar": "percent"}}
+
+
+@repaired(
+    "'RF' could be decimal or per cent by their size; they were taken as decimal, like the returns of the other",
+    same=False,
+)
+def a_high_risk_free_return_on_its_own(a, f, d):
+    return {"returns": a, "factors": f.drop(columns="RF"), "risk_free": 2.5 * f["RF"]}
+
+
+@repaired(
+    "The risk-free return 'RF' is usually 18.0% a year; if the column holds yearly yields, divide it by 12",
+    same=False,
+)
+def yearly_yields(a, f, d):
+    return {"returns": a, "factors": f.assign(RF=0.015)}
 
 
 @repaired("Returns taken as percent, told from their size and divided by 100: 'Cedar'.")

@@ -16,6 +16,7 @@ from soffit.intake.checks import check_losses
 from soffit.intake.frequency import consecutive, tell_frequency, to_one_calendar
 from soffit.intake.options import Content, Excess, Frequency, Mismatch, Role, Units, choice, per_series
 from soffit.intake.panel import Panel
+from soffit.intake.prices import mark_prices, prices_to_returns
 from soffit.intake.progress import Tick, progress_bar
 from soffit.intake.quality import check_quality, drop_first_periods
 from soffit.intake.readers import read
@@ -23,7 +24,7 @@ from soffit.intake.record import EntryKind, RecordBuilder
 from soffit.intake.roles import read_mapping, settle_roles
 from soffit.intake.sources import Limits, RawTable
 from soffit.intake.tables import Table, clean_table
-from soffit.intake.units import apply_units, mark_prices, prices_to_returns, settle_units
+from soffit.intake.units import to_decimals
 
 __all__ = ["open_panel"]
 
@@ -122,9 +123,10 @@ def open_panel(
             table = clean_table(raws.pop(0), kinds, codes, record, bar.update)
             tell_frequency(table, asked, record)
             mark_prices(table, told_content, kinds)
-            apply_units(table, settle_units(table, told_units, kinds, record))
-            check_losses(table, kinds, record)
             tables.append(table)
+    to_decimals(tables, told_units, kinds, record)
+    for table in tables:
+        check_losses(table, kinds, record)
     calendar = to_one_calendar(tables, kinds, asked, record)
     for table in tables:
         prices_to_returns(table, consecutive(table.stamps, calendar), record)

@@ -31,6 +31,7 @@ _FAR = {Frequency.DAILY: 12.0}
 _FAR_OTHERWISE = 6.0
 _MAD_TO_SIGMA = 1.482602218505602
 _EARLY = 12
+_HIGH_RATE = 0.12
 
 
 def check_quality(table: Table, roles: Mapping[str, Role], record: RecordBuilder) -> None:
@@ -112,6 +113,18 @@ def _outliers(
 
 def _check_rate(table: Table, position: int, frequency: Frequency, record: RecordBuilder) -> None:
     x = table.values[:, position] * frequency.periods_per_year
+    usual = float(column_medians(x[:, None])[0])
+    if usual > _HIGH_RATE:
+        record.add(
+            EntryKind.OUTLIERS,
+            f"The risk-free return '{table.names[position]}' is usually {usual:.1%} a year; if "
+            "the column holds yearly "
+            f"yields, divide it by {frequency.periods_per_year} first.",
+            Severity.WARNING,
+            series=table.names[position],
+            rows=len(x),
+            source=table.source,
+        )
     odd = np.flatnonzero((x > 0.3) | (x < -0.05))
     if len(odd):
         record.add(

@@ -8,10 +8,10 @@ from pathlib import Path
 from typing import Any
 
 from soffit.errors import InputError, nearest
+from soffit.intake.grid import Line, table_of
 from soffit.intake.progress import Tick
 from soffit.intake.record import EntryKind, listed
 from soffit.intake.sources import Limits, RawTable, Source, check_bytes, check_cells, need_extra
-from soffit.intake.text_files import Line, table_of
 
 __all__ = ["read_workbook"]
 
