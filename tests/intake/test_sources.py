@@ -231,3 +231,38 @@ def test_progress_shows_only_when_it_takes_long(frames, monkeypatch, capsys):
     assert "Reading" in capsys.readouterr().err
     open_panel(*frames, progress=False)
     assert capsys.readouterr().err == ""
+
+
+def test_a_data_library_file_with_several_tables(tmp_path):
+    # The layout of the public research files: a note, a table of months, a table of years, another weighting.
+    rng = np.random.default_rng(9)
+    months = [year * 100 + month for year in range(1990, 1996) for month in range(1, 13)]
+    rows = [f"{month},{rng.normal(0.5, 4):8.2f},{rng.normal(0.2, 3):8.2f},    0.30" for month in months]
+    rows[0] = "199001,  -99.99,   -0.31,    0.30"
+    years = [f"  {year},{10.0:8.2f},{4.0:8.2f},    3.60" for year in range(1990, 1996)]
+    content = [
+        "This file was created from the monthly database.  It contains value- and equal-weighted returns.",
+        "Missing data are indicated by -99.99 or -999.",
+        "",
+        "  Average Value Weighted Returns -- Monthly",
+        ",Hi Tech,Health,RF",
+        *rows,
+        "",
+        "  Average Value Weighted Returns -- Annual from January to December",
+        ",Hi Tech,Health,RF",
+        *years,
+        "",
+        "Copyright the desk",
+        "",
+    ]
+    path = tmp_path / "portfolios.csv"
+    path.write_bytes("\r\n".join(content).encode("latin-1"))
+    panel = open_panel(path)
+    assert list(panel.assets.columns) == ["Hi Tech", "Health"]
+    assert panel.record.rows.loc["portfolios.csv"].tolist() == [78, 72, 6, 0]
+    assert panel.assets["Hi Tech"].isna().tolist() == [True] + [False] * 71
+    assert panel.assets["Health"].iloc[0] == pytest.approx(-0.0031 - 0.003, abs=1e-15)
+    said = " ".join(entry.message for entry in panel.record.entries)
+    assert "A further table begins at line 79; its 6 rows (from line 81) were not read." in said
+    assert "3 lines before the names (line 5) were passed over." in said
+    assert "Cells with -99.99 count as no value: 'Hi Tech' (1)." in said

@@ -161,7 +161,7 @@ def read_dates(values: Any, place: Callable[[int], str], date_format: str | None
     InputError
         If a date cannot be read, is missing, or could mean two days.
     """
-    index = pd.Index(values)
+    index: pd.Index[Any] = values if isinstance(values, pd.Index) else pd.Index(values)
     if date_format is not None:
         return _by_format(index, place, date_format)
     if isinstance(index, pd.PeriodIndex):

@@ -17,6 +17,7 @@ __all__ = [
     "month_text",
     "period_ends",
     "periods_between",
+    "refuse_finer",
 ]
 
 Stamps = NDArray[np.datetime64]
