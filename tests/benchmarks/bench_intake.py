@@ -38,9 +38,9 @@ def write(folder: Path) -> None:
 
 def measure(folder: Path, answer: multiprocessing.Queue) -> None:
     """Open the panel once, and send what it took."""
-    from soffit.intake import open_panel
-
     import pyarrow.parquet  # noqa: F401
+
+    from soffit.intake import open_panel
 
     before = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
     start, used = time.perf_counter(), time.process_time()
@@ -72,7 +72,7 @@ def main() -> None:
         ("time", f"{seconds[0]:.2f} s, of which {seconds[1]:.2f} s on the processor (aim: under 3 s)"),
         ("memory", f"{grown / 1e6:.1f} MB, {grown / size:.1f} times the file (aim: under 4)"),
     ]
-    print("\n".join(f"{name:<8}{value}" for name, value in rows))  # noqa: T201
+    print("\n".join(f"{name:<8}{value}" for name, value in rows))
 
 
 if __name__ == "__main__":
