@@ -190,6 +190,10 @@ def test_lags_of_the_joint_test() -> None:
     assert wald_lags(LagRule.AUTOMATIC, scaled, f) == wald_lags(LagRule.AUTOMATIC, regression, f)
     with pytest.raises(EstimationError, match="0 to 119"):
         robust_wald(regression, f, lags=120)
+    beyond = wald_tests(regression, joint_alphas(regression), f, lags=120)
+    assert isinstance(beyond.robust, TestStatistic)
+    assert isinstance(beyond.hac, NotApplicable)
+    assert "do not fit" in beyond.hac.reason
 
 
 def test_exact_size() -> None:

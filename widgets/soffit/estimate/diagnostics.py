@@ -162,14 +162,14 @@ def ljung_box(residuals: Floats, lags: int) -> AssetTests:
     name, null = "Ljung-Box", f"no autocorrelation of the residuals up to lag {lags}"
     if lags >= T:
         return _absent(
-            name, null, e, lags, "ljung-box", f"{lags} autocorrelations cannot be had from {T} periods"
+            name, null, e, lags, "ljung-box-1978", f"{lags} autocorrelations cannot be had from {T} periods"
         )
     centred, usable = _standardised(e)
     statistic = np.zeros(e.shape[1])
     for j in range(1, lags + 1):
         r = (centred[j:] * centred[:-j]).mean(axis=0) * (T - j) / T
         statistic += r**2 / (T - j)
-    return _against_chi2(name, null, T * (T + 2.0) * statistic, usable, lags, "ljung-box")
+    return _against_chi2(name, null, T * (T + 2.0) * statistic, usable, lags, "ljung-box-1978")
 
 
 def breusch_pagan(residuals: Floats, factors: Floats) -> AssetTests:
@@ -206,9 +206,9 @@ def breusch_pagan(residuals: Floats, factors: Floats) -> AssetTests:
     T, K = f.shape
     name, null = "Breusch-Pagan", "the residual variance does not depend on the factors"
     if K == 0:
-        return _absent(name, null, e, K, "koenker", "there is no factor that the variance could depend on")
+        return _absent(name, null, e, K, "koenker-1981", "there is no factor that the variance could depend on")
     if T <= K + 1:
-        return _absent(name, null, e, K, "koenker", f"{T} periods are too few for {K} factors and a constant")
+        return _absent(name, null, e, K, "koenker-1981", f"{T} periods are too few for {K} factors and a constant")
     standard, usable = _standardised(e, centre=False)
     squares = standard**2
     squares = squares - squares.mean(axis=0)
@@ -218,7 +218,7 @@ def breusch_pagan(residuals: Floats, factors: Floats) -> AssetTests:
     basis, _ = np.linalg.qr(f - f.mean(axis=0))
     explained = ((basis.T @ squares) ** 2).sum(axis=0)
     share = np.divide(explained, total, out=np.zeros_like(total), where=~steady)
-    return _against_chi2(name, null, T * share, usable, K, "koenker")
+    return _against_chi2(name, null, T * share, usable, K, "koenker-1981")
 
 
 def jarque_bera(residuals: Floats) -> AssetTests:
@@ -248,11 +248,11 @@ def jarque_bera(residuals: Floats) -> AssetTests:
     name, null = "Jarque-Bera", "the residuals are normal"
     if T < 4:
         return _absent(
-            name, null, e, 2, "jarque-bera", f"{T} periods say nothing about skewness and kurtosis"
+            name, null, e, 2, "jarque-bera-1987", f"{T} periods say nothing about skewness and kurtosis"
         )
     z, usable = _standardised(e)
     skewness, excess = (z**3).mean(axis=0), (z**4).mean(axis=0) - 3.0
-    return _against_chi2(name, null, T / 6.0 * (skewness**2 + excess**2 / 4.0), usable, 2, "jarque-bera")
+    return _against_chi2(name, null, T / 6.0 * (skewness**2 + excess**2 / 4.0), usable, 2, "jarque-bera-1987")
 
 
 def _standardised(e: Floats, *, centre: bool = True) -> tuple[Floats, npt.NDArray[np.bool_]]:

@@ -148,9 +148,7 @@ class GRSPower:
         room = float(bound_factor(sharpe, np.sqrt(self.theta_f2), CeilingForm.ON_FACTORS))
         if not room > 0.0:
             return NotApplicable(
-                name,
-                f"a best Sharpe ratio of {sharpe:.3f} per period needs no alpha: the factors reach "
-                f"{np.sqrt(self.theta_f2):.3f}",
+                name, "a best Sharpe ratio that the factors reach by themselves needs no alpha"
             )
         low = self.count + self.width  # no degrees of freedom, hence no power
         high = low + 1

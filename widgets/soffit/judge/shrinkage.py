@@ -41,6 +41,11 @@ __all__ = [
 
 Floats = npt.NDArray[np.float64]
 
+_BELOW_FACTORS = (
+    "the factors alone already reach a Sharpe ratio above the ceiling in this sample; raise the ceiling or leave out "
+    "factors"
+)
+
 
 class IntervalBasis(StrEnum):
     """Which posterior the intervals of shrunk alphas come from."""
@@ -241,7 +246,7 @@ def shrunk_alphas(
     theta_f2, count, periods = regression.factors.theta2, regression.count, regression.periods
     k = float(prior_scale(ceiling, theta_f2, count))
     if np.isnan(k):
-        return NotApplicable("The alphas under this ceiling", _below_factors(ceiling, theta_f2))
+        return NotApplicable("The alphas under this ceiling", _BELOW_FACTORS)
     a = (1.0 + theta_f2) / periods
     weight = k / (k + a)
     alpha = np.where(regression.spanned, 0.0, regression.alpha)
@@ -347,18 +352,11 @@ def nearest_alphas(regression: Regression, joint: JointAlphas, ceiling: float) -
     name = "The nearest alphas under this ceiling"
     room = float(bound_factor(ceiling, np.sqrt(joint.theta_f2), CeilingForm.TOGETHER))
     if np.isnan(room):
-        return NotApplicable(name, _below_factors(ceiling, joint.theta_f2))
+        return NotApplicable(name, _BELOW_FACTORS)
     if isinstance(joint.quadratic, NotApplicable):
         return NotApplicable(name, joint.quadratic.reason)
     excess = np.sqrt(joint.quadratic)
     return regression.alpha * (1.0 if excess <= room else room / excess)
-
-
-def _below_factors(ceiling: float, theta_f2: float) -> str:
-    return (
-        f"the factors alone already reach a Sharpe ratio of {np.sqrt(theta_f2):.3f} per period, above the ceiling of "
-        f"{ceiling:.3f}; raise the ceiling or leave out factors"
-    )
 
 
 def _refuse_bad_level(level: float) -> None:

@@ -147,7 +147,10 @@ def wald_tests(
         hac: TestStatistic | NotApplicable = NotApplicable(_name(max(lags, 1)), reason)
     else:
         robust = compute(regression, factors, lags=0, debiased=debiased)
-        hac = compute(regression, factors, lags=lags, debiased=debiased) if lags else robust
+        if lags >= joint.periods:
+            hac = NotApplicable(_name(lags), f"{lags} lags do not fit into {joint.periods} periods")
+        else:
+            hac = compute(regression, factors, lags=lags, debiased=debiased) if lags else robust
     return WaldTests(
         classical=classical_wald(joint),
         robust=robust,
@@ -324,15 +327,12 @@ def wald_lags(rule: LagRule, regression: Regression, factors: Floats, *, fixed: 
     factors : ndarray, shape (T, K)
         The factors of that regression.
     fixed : int
-        The number under the fixed rule.
-
-    Raises
-    ------
-    EstimationError
-        If the fixed number does not fit the sample.
+        The number under the fixed rule; :func:`wald_tests` says so if the sample is too short for it.
     """
-    if rule is not LagRule.AUTOMATIC:
-        return newey_west_lags(rule, regression.periods, fixed=fixed)
+    if rule is LagRule.FIXED:
+        return fixed
+    if rule is LagRule.RULE_OF_THUMB:
+        return newey_west_lags(rule, regression.periods)
     e = regression.residuals
     f = factors if factors.shape[1] else np.ones((len(e), 1))
     size = np.sqrt((f**2).T @ e**2)

@@ -10,25 +10,33 @@ from typing import TYPE_CHECKING, Any, Concatenate, ParamSpec, TypeVar, cast
 
 import pandas as pd
 
+from soffit.estimate.statistic import NotApplicable
 from soffit.hedge.costs import LegKind
 from soffit.hedge.ticket import Instrument, Rounding, Ticket
 from soffit.hedge.walk_forward import WalkSchedule
 from soffit.hedge.weights import HedgeRule
 from soffit.intake import Panel, open_panel
 from soffit.intake.options import choice
+from soffit.judge.large_n import LargeN, large_n_test
+from soffit.judge.wald import OverRejection, WaldTests, wald_lags, wald_tests
 from soffit.settings import CeilingForm, Settings
+from soffit.study.alpha_under_ceiling import AlphaUnderCeiling
 from soffit.study.ceiling_verdict import CeilingMap, CeilingVerdict
 from soffit.study.characteristic_premia import CharacteristicsPriced, CharacteristicTable
 from soffit.study.factor_regression import FactorRegression
+from soffit.study.factor_sets import FactorSets
 from soffit.study.hedge_book import BookAlpha, BookLimits, HedgedBook, book_alphas
 from soffit.study.hedge_costs import WalkCosts
 from soffit.study.hedge_ratios import FactorHedge
 from soffit.study.hedge_settings import cost_rates, hedge_rule, known_names, leg_kinds, walk_schedule
 from soffit.study.hedge_ticket import Mimicking, make_mimicking, make_ticket
 from soffit.study.hedge_walk import HedgeWalk
+from soffit.study.joint_evidence import JointPower, ResidualAssumptions, robust_sizes
 from soffit.study.joint_test import JointTest
+from soffit.study.many_alphas import ManyAlphas
 from soffit.study.prices_of_risk import PricesOfRisk
 from soffit.study.sample import Sample
+from soffit.study.sharpe_ratios import SharpeGap, SharpeTable
 from soffit.study.vintage import VintageEffect
 
 if TYPE_CHECKING:
@@ -196,6 +204,58 @@ class Study:
         return JointTest.of(self.regression(), self.settings)
 
     @computed(*REGRESSION)
+    def wald(self) -> WaldTests:
+        """Asymptotic Wald tests of zero alphas: classical, heteroskedasticity-robust and HAC by the lag rule."""
+        joint, settings = self.joint_test(), self.settings
+        factors = joint.block.factors
+        lags = wald_lags(settings.lag_rule, joint.fit, factors, fixed=settings.lags)
+        return wald_tests(
+            joint.fit, joint.alphas, factors, lags=lags, nominal=round(1.0 - settings.level, 12)
+        )
+
+    @computed(*REGRESSION, "seed")
+    def wald_sizes(self) -> tuple[OverRejection | NotApplicable, OverRejection | NotApplicable]:
+        """How often the robust and the HAC Wald test reject zero alphas that are truly zero, by simulation."""
+        wald, joint = self.wald(), self.joint_test()
+        return robust_sizes(wald, joint, round(1.0 - self.settings.level, 12), self.settings.seed)
+
+    @computed(*SAMPLE)
+    def large_n(self) -> LargeN:
+        """Test zero alphas by their squared t ratios, which needs no more periods than assets."""
+        return large_n_test(self.joint_test().fit)
+
+    @computed(*REGRESSION)
+    def assumptions(self) -> ResidualAssumptions:
+        """Check autocorrelation, heteroskedasticity and normality of the joint test's residuals."""
+        return ResidualAssumptions.of(self.joint_test())
+
+    @computed(*SAMPLE, "level", "power_sharpe")
+    def power(self) -> JointPower:
+        """Power of the GRS test against the settings' Sharpe ratio, and the sample it would need."""
+        return JointPower.of(self.joint_test(), self.settings)
+
+    def alpha_under_ceiling(
+        self, ceiling: float | None = None, form: CeilingForm | None = None
+    ) -> AlphaUnderCeiling:
+        """Say which alphas may be used under a Sharpe ceiling.
+
+        Parameters
+        ----------
+        ceiling : float, optional
+            Highest Sharpe ratio a year; from the settings if None.
+        form : CeilingForm, optional
+            Which portfolio the hard bound binds; from the settings if None.
+
+        Raises
+        ------
+        SettingError
+            If the ceiling is negative or not a number.
+        """
+        values = {"ceiling": ceiling, "ceiling_form": form}
+        settings = self.settings.changed({name: value for name, value in values.items() if value is not None})
+        return AlphaUnderCeiling(self.joint_test(), settings.ceiling, settings.ceiling_form)
+
+    @computed(*REGRESSION)
     def ceiling_map(self) -> CeilingMap:
         """What the alphas say about ceilings, before one is named."""
         return CeilingMap(self.regression(), self.joint_test())
@@ -217,6 +277,47 @@ class Study:
                 {name: value for name, value in values.items() if value is not None}
             )
         return self.ceiling_map().at(chosen.ceiling, chosen.ceiling_form)
+
+    @computed(*SAMPLE, "lag_rule", "lags", "level", "trials")
+    def sharpe_ratios(self) -> SharpeTable:
+        """Sharpe ratios of every factor and asset, and of the factors' best combination."""
+        return SharpeTable.of(self.sample(), self.joint_test(), self.settings)
+
+    @computed(*SAMPLE, "lag_rule", "lags", "level", "bootstrap_draws", "seed")
+    def sharpe_difference(self, first: str, second: str) -> SharpeGap:
+        """Test that two Sharpe ratios are equal.
+
+        Parameters
+        ----------
+        first, second : str
+            Factors or assets of the sample.
+
+        Raises
+        ------
+        SettingError
+            If a name is neither.
+        EstimationError
+            If the two share too few rows.
+        """
+        return SharpeGap.of(self.sample(), first, second, self.settings)
+
+    @computed(*REGRESSION, "trials")
+    def many_alphas(self) -> ManyAlphas:
+        """Adjust the alphas' p-values for the number of tests."""
+        return ManyAlphas.of(self.regression(), self.settings)
+
+    @computed(*REGRESSION, "factor_sets")
+    def factor_sets(self) -> FactorSets:
+        """Hold sets of factors against the same assets, and each factor against the others.
+
+        Raises
+        ------
+        SettingError
+            If a set names a factor that the panel lacks, or there is no factor.
+        EstimationError
+            If a regression cannot be run, or a factor is a combination of the others.
+        """
+        return FactorSets.of(self.panel, self.sample(), self.joint_test().block, self.settings)
 
     @computed(*CROSS_SECTION)
     def prices_of_risk(self, *, non_traded: tuple[str, ...] = ()) -> PricesOfRisk:

@@ -14,9 +14,13 @@ __all__ = ["EXHIBITS", "build"]
 # Key of the exhibit and the module whose function ``exhibit(study)`` builds it, in the order of a memo.
 EXHIBITS: dict[str, str] = {
     "intake": "soffit.present.exhibits.intake",
+    "sharpe-ratios": "soffit.present.exhibits.sharpe_ratios",
     "regression": "soffit.present.exhibits.regression",
+    "many-alphas": "soffit.present.exhibits.many_alphas",
     "joint": "soffit.present.exhibits.joint",
     "ceiling": "soffit.present.exhibits.ceiling",
+    "alphas-under-ceiling": "soffit.present.exhibits.alphas_under_ceiling",
+    "factor-sets": "soffit.present.exhibits.factor_sets",
     "prices-of-risk": "soffit.present.exhibits.prices_of_risk",
     "hedge": "soffit.present.exhibits.hedge",
     "hedge-walk": "soffit.present.exhibits.hedge_walk",
