@@ -206,9 +206,13 @@ def breusch_pagan(residuals: Floats, factors: Floats) -> AssetTests:
     T, K = f.shape
     name, null = "Breusch-Pagan", "the residual variance does not depend on the factors"
     if K == 0:
-        return _absent(name, null, e, K, "koenker-1981", "there is no factor that the variance could depend on")
+        return _absent(
+            name, null, e, K, "koenker-1981", "there is no factor that the variance could depend on"
+        )
     if T <= K + 1:
-        return _absent(name, null, e, K, "koenker-1981", f"{T} periods are too few for {K} factors and a constant")
+        return _absent(
+            name, null, e, K, "koenker-1981", f"{T} periods are too few for {K} factors and a constant"
+        )
     standard, usable = _standardised(e, centre=False)
     squares = standard**2
     squares = squares - squares.mean(axis=0)
