@@ -13,7 +13,7 @@ from soffit.intake.opening import open_panel
 from soffit.intake.options import Role
 from soffit.intake.panel import Panel
 
-__all__ = ["VintageComparison", "compare_vintages"]
+__all__ = ["VintageComparison", "compare_vintages", "open_vintage"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -76,7 +76,7 @@ def compare_vintages(old: Any, new: Any, *, tolerance: float = 1e-9) -> VintageC
     InputError
         If the two have no series or no dates in common, or differ in frequency.
     """
-    first, second = _opened(old), _opened(new)
+    first, second = open_vintage(old), open_vintage(new)
     if first.frequency is not second.frequency:
         raise InputError(
             f"The old vintage is {first.frequency.value}, the new one {second.frequency.value}",
@@ -104,13 +104,20 @@ def compare_vintages(old: Any, new: Any, *, tolerance: float = 1e-9) -> VintageC
     )
 
 
-def _opened(vintage: Any) -> Panel:
+def open_vintage(vintage: Any) -> Panel:
+    """Open a vintage with every series a traded factor; a Panel stays as it is.
+
+    Raises
+    ------
+    InputError
+        If the data cannot be used as they are.
+    """
     if isinstance(vintage, Panel):
         return vintage
     opened = open_panel(vintage, progress=False)
     if opened.assets.shape[1]:
-        roles = {str(name): Role.FACTOR for name in opened.assets.columns}
-        opened = open_panel(vintage, roles=roles, progress=False)
+        names = [str(name) for frame in (opened.assets, opened.factors) for name in frame.columns]
+        opened = open_panel(vintage, roles=dict.fromkeys(names, Role.FACTOR), progress=False)
     return opened
 
 

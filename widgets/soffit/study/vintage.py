@@ -8,9 +8,8 @@ from typing import TYPE_CHECKING, Any
 import pandas as pd
 
 from soffit.errors import InputError
-from soffit.intake import Panel, open_panel
-from soffit.intake.options import Role
-from soffit.intake.vintages import VintageComparison, compare_vintages
+from soffit.intake import Panel
+from soffit.intake.vintages import VintageComparison, compare_vintages, open_vintage
 from soffit.study.factor_regression import FactorRegression
 from soffit.study.sample import Sample
 
@@ -45,7 +44,7 @@ class VintageEffect:
         InputError
             If the vintage cannot be read, or lacks a factor of the study.
         """
-        opened = vintage if isinstance(vintage, Panel) else _opened(vintage)
+        opened = open_vintage(vintage)
         comparison = compare_vintages(opened, replace(panel, risk_free=None))
         names = list(settings.factors or panel.factors.columns)
         missing = [name for name in names if name not in opened.factors]
@@ -75,10 +74,3 @@ class VintageEffect:
                 "periods": new["periods"],
             }
         )
-
-
-def _opened(vintage: Any) -> Panel:
-    """Open a file or frame with every series a traded factor."""
-    first = open_panel(vintage, progress=False)
-    names = [str(name) for frame in (first.assets, first.factors) for name in frame.columns]
-    return open_panel(vintage, roles=dict.fromkeys(names, Role.FACTOR), progress=False)
