@@ -3,18 +3,26 @@
 from __future__ import annotations
 
 import hashlib
+import os
+import re
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, fields, replace
 from pathlib import Path
 from typing import Any
 
 from soffit.errors import InputError, SettingError, nearest
+from soffit.intake import Source
 from soffit.settings import Settings
 from soffit.study import Study
 
 __all__ = ["Inputs", "file_fingerprint"]
 
-_OPTIONS = ("risk_free", "excess", "raw_factors", "roles", "units", "content", "frequency", "missing")
+_OPTIONS = (
+    *("risk_free", "excess", "raw_factors", "roles", "units", "content", "frequency", "missing"),
+    *("skip_first", "labels", "mismatch"),
+)
+_PARTICULARS = tuple(item.name for item in fields(Source))
+_PASSWORD = re.compile(r"://[^/@:]*:[^/@]*@")
 
 
 @dataclass(frozen=True)
@@ -23,35 +31,59 @@ class Inputs:
 
     Parameters
     ----------
-    returns : str
-        Path of the assets' returns, as given; relative paths count from the study file's folder.
-    factors : str
-        Path of the factors' returns; empty if they stand in `returns`.
+    returns, factors : str or mapping
+        Path of a file, or the particulars of a :class:`soffit.intake.Source` with the path as ``data``. Relative
+        paths count from the study file's folder. `factors` is empty if they stand in `returns`.
     options : mapping
-        Options of the intake: risk_free, excess, raw_factors, roles, units, content, frequency, missing.
+        Options of the intake: risk_free, excess, raw_factors, roles, units, content, frequency, missing,
+        skip_first, labels, mismatch.
+    folder : Path
+        Where relative paths count from; the working folder by default.
+
+    Raises
+    ------
+    SettingError
+        For an unknown option or particular, or an address with a password in it, which no memo should carry.
     """
 
-    returns: str
-    factors: str = ""
+    returns: str | Mapping[str, Any]
+    factors: str | Mapping[str, Any] = ""
     options: Mapping[str, Any] = field(default_factory=dict)
+    folder: Path = Path()
 
     def __post_init__(self) -> None:
         for name in self.options:
             if name not in _OPTIONS:
                 raise SettingError(f"The data have no option '{name}'", remedy=nearest(name, _OPTIONS))
+        for source in (self.returns, self.factors):
+            for name in source if isinstance(source, Mapping) else ():
+                if name not in _PARTICULARS:
+                    raise SettingError(f"A source has no '{name}'", remedy=nearest(name, _PARTICULARS))
+            if _PASSWORD.search(_place(source)):
+                raise SettingError(
+                    "The address of the data holds a password",
+                    remedy="leave it out and let the database driver find it",
+                )
 
     @property
     def paths(self) -> tuple[str, ...]:
-        """The files, the assets' first."""
-        return tuple(path for path in (self.returns, self.factors) if path)
+        """The files or addresses, the assets' first."""
+        return tuple(place for place in (_place(self.returns), _place(self.factors)) if place)
 
-    def open(self, folder: Path, settings: Settings | None = None) -> Study:
+    @property
+    def names(self) -> tuple[str, ...]:
+        """The files or addresses without their folders, as a page prints them."""
+        return tuple(place if "://" in place else Path(place).name for place in self.paths)
+
+    def files(self) -> dict[str, Path]:
+        """The files by the names they were given; addresses of databases are left out."""
+        return {place: (self.folder / place).resolve() for place in self.paths if "://" not in place}
+
+    def open(self, settings: Settings | None = None) -> Study:
         """Open the study from its files.
 
         Parameters
         ----------
-        folder : Path
-            Where relative paths count from.
         settings : Settings, optional
             Defaults otherwise.
 
@@ -62,9 +94,21 @@ class Inputs:
         """
         options = dict(self.options)
         if isinstance(options.get("roles"), str):
-            options["roles"] = folder / options["roles"]
-        factors = folder / self.factors if self.factors else None
-        return Study.open(folder / self.returns, factors, settings=settings, **options)
+            options["roles"] = self.folder / options["roles"]
+        factors = _source(self.factors, self.folder) if self.factors else None
+        return Study.open(_source(self.returns, self.folder), factors, settings=settings, **options)
+
+    def seen_from(self, other: Path) -> Inputs:
+        """The same files with paths that count from another folder."""
+        folder = self.folder
+        if folder.resolve() == other.resolve():
+            return replace(self, folder=other)
+        options = dict(self.options)
+        if isinstance(options.get("roles"), str):
+            options["roles"] = _moved(options["roles"], folder, other)
+        return Inputs(
+            _moved(self.returns, folder, other), _moved(self.factors, folder, other), options, other
+        )
 
     def to_dict(self) -> dict[str, Any]:
         """Plain values for a TOML table; what is empty is left out."""
@@ -74,8 +118,8 @@ class Inputs:
         return {**data, **self.options}
 
     @classmethod
-    def from_dict(cls, values: Mapping[str, Any]) -> Inputs:
-        """Inputs from a TOML table.
+    def from_dict(cls, values: Mapping[str, Any], folder: Path = Path()) -> Inputs:
+        """Inputs from a TOML table; relative paths count from `folder`.
 
         Raises
         ------
@@ -84,11 +128,11 @@ class Inputs:
         """
         rest = dict(values)
         returns, factors = rest.pop("returns", ""), rest.pop("factors", "")
-        if not returns:
+        if not _place(returns):
             raise SettingError(
                 "The table [data] does not say where the returns are", remedy='add returns = "returns.csv"'
             )
-        return cls(str(returns), str(factors), rest)
+        return cls(returns, factors, rest, folder)
 
 
 def file_fingerprint(path: Path) -> str:
@@ -103,3 +147,24 @@ def file_fingerprint(path: Path) -> str:
         return hashlib.sha256(path.read_bytes()).hexdigest()
     except OSError as error:
         raise InputError(f"The file '{path}' cannot be read ({error})") from error
+
+
+def _place(source: str | Mapping[str, Any]) -> str:
+    return str(source.get("data", "")) if isinstance(source, Mapping) else str(source)
+
+
+def _source(source: str | Mapping[str, Any], folder: Path) -> Any:
+    place = _place(source)
+    data = place if "://" in place else (folder / place).resolve()
+    return Source(**{**source, "data": data}) if isinstance(source, Mapping) else data
+
+
+def _moved(source: Any, folder: Path, other: Path) -> Any:
+    place = _place(source)
+    if not place or "://" in place or Path(place).is_absolute():
+        return source
+    try:
+        moved = Path(os.path.relpath((folder / place).resolve(), other.resolve())).as_posix()
+    except ValueError:  # another drive: no relative path leads there
+        moved = (folder / place).resolve().as_posix()
+    return {**source, "data": moved} if isinstance(source, Mapping) else moved

@@ -20,24 +20,22 @@ from soffit.present.spec import Exhibit, FigureSpec, TableSpec
 from soffit.settings import Settings
 from soffit.study import Study
 
-__all__ = ["Pack"]
+__all__ = ["KeptPart", "Pack"]
 
 S = TypeVar("S", FigureSpec, TableSpec)
 
 
 @dataclass(frozen=True, eq=False)
-class _Item:
+class KeptPart:
+    """A kept exhibit and the labels of its section."""
+
     kept: Kept
     labels: tuple[Label, ...] = ()
 
     @property
     def exhibit(self) -> Exhibit:
+        """The exhibit."""
         return self.kept.exhibit
-
-
-@dataclass(frozen=True)
-class _Words:
-    text: str
 
 
 class Pack:
@@ -79,7 +77,7 @@ class Pack:
         self.title, self.author, self.dated = title, author, dated
         self.labels = _labels(labels)
         self.inputs = inputs
-        self._parts: list[_Item | _Words] = [_Item(_kept(item, study)) for item in study.kept]
+        self._parts: list[KeptPart | str] = [KeptPart(_kept(item, study)) for item in study.kept]
         self._captions: dict[str, str] = {}
 
     def __len__(self) -> int:
@@ -92,12 +90,22 @@ class Pack:
     @property
     def contents(self) -> tuple[str, ...]:
         """What is in the pack, in order: keys of exhibits, and ``"words"`` for paragraphs."""
-        return tuple(part.exhibit.key if isinstance(part, _Item) else "words" for part in self._parts)
+        return tuple(part.exhibit.key if isinstance(part, KeptPart) else "words" for part in self._parts)
+
+    @property
+    def parts(self) -> tuple[KeptPart | str, ...]:
+        """The kept exhibits and the analyst's paragraphs, in order."""
+        return tuple(self._parts)
+
+    @property
+    def captions(self) -> dict[str, str]:
+        """Captions that the analyst replaced, by key."""
+        return dict(self._captions)
 
     @property
     def exhibits(self) -> tuple[Kept, ...]:
         """The kept exhibits with their settings, in order."""
-        return tuple(part.kept for part in self._parts if isinstance(part, _Item))
+        return tuple(part.kept for part in self._parts if isinstance(part, KeptPart))
 
     def keep(
         self, exhibit: Exhibit | Kept | str, *, labels: Iterable[Label] = (), study: Study | None = None
@@ -128,12 +136,12 @@ class Pack:
                 remedy="make a second pack",
             )
         made = build(exhibit, origin) if isinstance(exhibit, str) else exhibit
-        self._parts.append(_Item(_kept(made, origin), _labels(labels)))
+        self._parts.append(KeptPart(_kept(made, origin), _labels(labels)))
         return self
 
     def say(self, text: str) -> Self:
         """Add a paragraph; ``{key}`` stands for the number of the figure or table of that key."""
-        self._parts.append(_Words(text))
+        self._parts.append(text)
         return self
 
     def caption(self, key: str, text: str) -> Self:
@@ -189,14 +197,14 @@ class Pack:
         """
         if not self.exhibits:
             raise InputError("Nothing was kept for the memo", remedy="keep at least one exhibit")
-        items = [part for part in self._parts if isinstance(part, _Item)]
+        items = [part for part in self._parts if isinstance(part, KeptPart)]
         references = cite(key for item in items for key in item.exhibit.sources)
         figures, tables, anchors = self._numbered(items)
         body: list[Section | Remark] = []
         done = 0
         for part in self._parts:
-            if isinstance(part, _Words):
-                body.append(Remark(runs(part.text, anchors)))
+            if isinstance(part, str):
+                body.append(Remark(runs(part, anchors)))
             else:
                 body.append(self._section(done, part, figures[done], tables[done], references))
                 done += 1
@@ -215,7 +223,7 @@ class Pack:
         )
 
     def _numbered(
-        self, items: Sequence[_Item]
+        self, items: Sequence[KeptPart]
     ) -> tuple[list[tuple[NumberedFigure, ...]], list[tuple[NumberedTable, ...]], dict[str, Link]]:
         figures = _count([item.exhibit.figures for item in items])
         tables = _count([item.exhibit.tables for item in items])
@@ -238,7 +246,7 @@ class Pack:
     def _section(
         self,
         position: int,
-        item: _Item,
+        item: KeptPart,
         figures: tuple[NumberedFigure, ...],
         tables: tuple[NumberedTable, ...],
         references: list[str],

@@ -9,9 +9,10 @@ from pathlib import Path
 
 from soffit.errors import InputError, SettingError, nearest
 from soffit.memo.layout import Memo
+from soffit.memo.manifest import MANIFEST, STUDY_FILE, can_run_again, make_manifest, study_toml
 from soffit.memo.pack import Pack
 
-__all__ = ["Format", "write"]
+__all__ = ["Format", "render", "write"]
 
 
 class Format(StrEnum):
@@ -64,10 +65,46 @@ _WRITERS: dict[Format, Callable[[Memo], Mapping[str, bytes]]] = {
 }
 
 
+def render(memo: Memo, formats: Iterable[Format | str]) -> dict[str, bytes]:
+    """Make the files of a memo without writing them.
+
+    Parameters
+    ----------
+    memo : Memo
+        As laid out.
+    formats : iterable of Format or str
+        What to make.
+
+    Returns
+    -------
+    dict of str to bytes
+        Each file by its name in the pack's folder; the same bytes for the same memo.
+
+    Raises
+    ------
+    SettingError
+        For an unknown format.
+    InputError
+        If a format's library is not installed.
+    """
+    files: dict[str, bytes] = {}
+    for form in dict.fromkeys(_format(name) for name in formats):
+        try:
+            files.update(_WRITERS[form](memo))
+        except ModuleNotFoundError as error:
+            raise InputError(
+                f"'{form}' needs the package {error.name}", remedy='pip install "soffit[memo]"'
+            ) from error
+    return files
+
+
 def write(
     pack: Pack, directory: str | Path, formats: Iterable[Format | str] = (Format.HTML, Format.PNG)
 ) -> list[Path]:
     """Write a pack.
+
+    Beside the formats stands ``manifest.json`` with every number at full precision, and, where the pack knows its
+    files, ``study.toml``, which makes it again.
 
     Parameters
     ----------
@@ -90,16 +127,12 @@ def write(
     InputError
         If nothing was kept, the folder cannot be written, or a format's library is not installed.
     """
-    chosen = list(dict.fromkeys(_format(name) for name in formats))
+    chosen = tuple(dict.fromkeys(_format(name) for name in formats))
     memo, folder = pack.lay_out(), Path(directory)
-    files: dict[str, bytes] = {}
-    for form in chosen:
-        try:
-            files.update(_WRITERS[form](memo))
-        except ModuleNotFoundError as error:
-            raise InputError(
-                f"'{form}' needs the package {error.name}", remedy='pip install "soffit[memo]"'
-            ) from error
+    files = render(memo, chosen)
+    if can_run_again(pack):
+        files[STUDY_FILE] = study_toml(pack, chosen, folder)
+    files[MANIFEST] = make_manifest(pack, memo, files, chosen, folder)
     return [_save(folder / name, data) for name, data in files.items()]
 
 
