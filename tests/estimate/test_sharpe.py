@@ -201,6 +201,11 @@ def test_autocorrelations_against_a_literal_loop() -> None:
             expected = sum(d[t] * d[t - lag] for t in range(lag, 30)) / sum(d * d)
             np.testing.assert_allclose(found[lag - 1, n], expected, rtol=1e-11)
     assert np.isnan(autocorrelations(np.full(10, 0.01), 2)).all()
+    shorter = x.copy()
+    shorter[:10, 0] = np.nan
+    own = autocorrelations(shorter, 4, own_history=True)
+    np.testing.assert_allclose(own[:, 0], autocorrelations(x[10:, 0], 4)[:, 0], rtol=1e-11)
+    np.testing.assert_allclose(own[:, 1], found[:, 1], rtol=1e-12)
     with pytest.raises(EstimationError, match="lag 30"):
         autocorrelations(x, 30)
 

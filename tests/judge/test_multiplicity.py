@@ -20,6 +20,7 @@ from soffit.judge.multiplicity import (
     null_share,
     null_share_at,
     single_test_level,
+    stepwise_t_hurdles,
     t_hurdle,
 )
 
@@ -131,6 +132,20 @@ def test_hurdles_are_the_tails_they_promise() -> None:
         assert t_hurdle(tests, 0.95, Hurdle.SIDAK) <= t_hurdle(tests, 0.95) + 1e-12
 
 
+def test_stepwise_hurdles_reject_what_the_adjusted_pvalues_do() -> None:
+    t = np.sort(np.abs(np.random.default_rng(7).normal(1.2, 1.5, 40)))[::-1]
+    for trials in (40, 90):
+        found = many_tests(2 * stats.t.sf(t, 55), trials=trials).rejected(Adjustment.BENJAMINI_HOCHBERG)
+        hurdles = stepwise_t_hurdles(40, trials, 0.95, df=55)
+        passing = np.flatnonzero(t >= hurdles)
+        expected = np.arange(40) <= (passing.max() if passing.size else -1)
+        np.testing.assert_array_equal(found, expected)
+        assert hurdles[0] == pytest.approx(t_hurdle(trials, 0.95, df=55))
+    assert stepwise_t_hurdles(3, 3, 0.95)[-1] == pytest.approx(stats.norm.isf(0.025))
+    with pytest.raises(SettingError, match="5 ratios came for 4 tests"):
+        stepwise_t_hurdles(5, 4, 0.95)
+
+
 def test_share_of_true_nulls_against_a_literal_loop() -> None:
     rng = np.random.default_rng(1)
     p = np.concatenate([rng.uniform(size=60), rng.beta(0.2, 8, size=40)])
@@ -138,6 +153,7 @@ def test_share_of_true_nulls_against_a_literal_loop() -> None:
         expected = sum(1 for value in p if value > cut) / ((1 - cut) * 100)
         assert null_share_at(p, cut) == pytest.approx(min(expected, 1.0))
     found = null_share(p)
+    assert not isinstance(found, NotApplicable)
     cuts = [k / 20 for k in range(1, 20)]
     estimates = [sum(1 for v in p if v > c) / ((1 - c) * 100) for c in cuts]
     floor = np.quantile(estimates, 0.1)

@@ -337,15 +337,18 @@ def mertens_error(
     return np.asarray(np.sqrt(spread / count), dtype=float)
 
 
-def autocorrelations(returns: Floats, lags: int) -> Floats:
+def autocorrelations(returns: Floats, lags: int, *, own_history: bool = False) -> Floats:
     """Sample autocorrelations with the full-sample mean and the full-sample sum of squares.
 
     Parameters
     ----------
     returns : ndarray, shape (T, N) or (T,)
-        Returns, complete.
+        Returns.
     lags : int
         Highest lag.
+    own_history : bool
+        Whether a missing value means that the series has no return then; products over a gap are left out.
+        Otherwise it is refused.
 
     Returns
     -------
@@ -359,15 +362,17 @@ def autocorrelations(returns: Floats, lags: int) -> Floats:
     EstimationError
         If there are not more periods than lags.
     """
-    values, _ = _checked(returns, False, 0)
+    values, seen = _checked(returns, own_history, 0)
     if not 0 <= lags < len(values):
         raise EstimationError(
             f"Autocorrelations to lag {lags} were asked of {len(values)} periods",
             allowed=f"0 to {len(values) - 1}",
             remedy="ask for fewer lags or use a longer sample",
         )
-    centred = values - values.mean(axis=0)
-    flat = np.abs(centred).max(axis=0) <= _ROUNDING * np.abs(values).max(axis=0)
+    filled = np.where(seen, values, 0.0)
+    mean = filled.sum(axis=0) / np.maximum(seen.sum(axis=0), 1)
+    centred = np.where(seen, filled - mean, 0.0)
+    flat = np.abs(centred).max(axis=0) <= _ROUNDING * np.abs(filled).max(axis=0)
     total = np.where(flat, np.nan, (centred**2).sum(axis=0))
     out = np.empty((lags, values.shape[1]))
     for lag in range(1, lags + 1):

@@ -29,6 +29,7 @@ __all__ = [
     "null_share",
     "null_share_at",
     "single_test_level",
+    "stepwise_t_hurdles",
     "t_hurdle",
 ]
 
@@ -45,8 +46,8 @@ class Adjustment(StrEnum):
     HOLM = "Holm"
     HOCHBERG = "Hochberg"
     HOMMEL = "Hommel"
-    BENJAMINI_HOCHBERG = "Benjamini-Hochberg"
-    BENJAMINI_YEKUTIELI = "Benjamini-Yekutieli"
+    BENJAMINI_HOCHBERG = "Benjamini–Hochberg"
+    BENJAMINI_YEKUTIELI = "Benjamini–Yekutieli"
 
     @property
     def controls(self) -> str:
@@ -309,6 +310,41 @@ def t_hurdle(tests: int, level: float, kind: Hurdle = Hurdle.BONFERRONI, *, df: 
         raise InputError(f"The degrees of freedom are {df!r}", allowed="a number above zero")
     tail = 0.5 * single_test_level(tests, level, kind)
     return float(stats.norm.isf(tail) if df is None else stats.t.isf(tail, df))
+
+
+def stepwise_t_hurdles(count: int, tests: int, level: float, *, df: float | None = None) -> Floats:
+    """Absolute t ratios that the 1st, 2nd, … largest must pass under Benjamini and Hochberg (1995).
+
+    Parameters
+    ----------
+    count : int
+        How many of them.
+    tests : int
+        m, at least `count`.
+    level : float
+        1 − false discovery rate.
+    df : float, optional
+        Degrees of freedom; the normal distribution if not given.
+
+    Returns
+    -------
+    ndarray, shape (count,)
+        The two-sided quantile at ``size·i/m``. All up to the last ratio that passes its own hurdle are rejected.
+
+    Raises
+    ------
+    InputError
+        If the level is not between 0 and 1.
+    SettingError
+        If there are more ratios than tests.
+    """
+    _refuse_bad_level(level)
+    if not 0 <= count <= tests:
+        raise SettingError(
+            f"{count} ratios came for {tests} tests", allowed="as many tests as ratios, or more"
+        )
+    tail = 0.5 * (1.0 - level) * np.arange(1.0, count + 1.0) / tests
+    return np.asarray(stats.norm.isf(tail) if df is None else stats.t.isf(tail, df), dtype=float)
 
 
 def null_share_at(pvalues: npt.ArrayLike, cut: float) -> float:
