@@ -9,11 +9,11 @@ import statsmodels.api as sm
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from linearmodels.asset_pricing import TradedFactorModel
+from tests.universes import INDUSTRIES
 
 from soffit.errors import EstimationError
 from soffit.estimate.regression import ErrorChoice, factor_moments, least_squares, regress
 from soffit.settings import ErrorType, LagRule, Reference
-from tests.universes import INDUSTRIES
 
 FF3 = ["MktRF", "SMB", "HML"]
 HC = {ErrorType.HC0: "HC0", ErrorType.HC1: "HC1", ErrorType.HC2: "HC2", ErrorType.HC3: "HC3"}

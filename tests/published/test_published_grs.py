@@ -11,12 +11,12 @@ import numpy as np
 import pandas as pd
 import pytest
 from scipy import stats
+from tests.universes import INDUSTRIES, SIZE_MOMENTUM, SIZE_VALUE
 
 from soffit.estimate.regression import factor_moments, regress
 from soffit.judge.ceiling import AlphaTable, JointCeiling, bound_factor
 from soffit.judge.joint import JointAlphas, grs_from_sharpe, joint_alphas
 from soffit.settings import CeilingForm
-from tests.universes import INDUSTRIES, SIZE_MOMENTUM, SIZE_VALUE
 
 FF3, FF4 = ["MktRF", "SMB", "HML"], ["MktRF", "SMB", "HML", "Mom"]
 

@@ -14,12 +14,16 @@ __version__ = "0.1.0"
 
 # Names are imported when they are first used, so that `import soffit` stays quick.
 _HOMES: dict[str, str] = {
+    "BookAlpha": "soffit.study",
     "CeilingForm": "soffit.settings",
     "CeilingPanel": "soffit.panels",
     "ErrorType": "soffit.settings",
     "Histories": "soffit.settings",
+    "Instrument": "soffit.hedge.ticket",
+    "LegKind": "soffit.hedge.costs",
     "LagRule": "soffit.settings",
     "Pack": "soffit.memo",
+    "Rounding": "soffit.hedge.ticket",
     "Settings": "soffit.settings",
     "Study": "soffit.study",
     "build": "soffit.present.exhibits",
@@ -29,12 +33,16 @@ _HOMES: dict[str, str] = {
 }
 
 __all__ = [
+    "BookAlpha",
     "CeilingForm",
     "CeilingPanel",
     "ErrorType",
     "Histories",
+    "Instrument",
     "LagRule",
+    "LegKind",
     "Pack",
+    "Rounding",
     "Settings",
     "Study",
     "__version__",

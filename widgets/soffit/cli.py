@@ -78,7 +78,7 @@ def _study_options(command: Callable[..., None]) -> Callable[..., None]:
             "formats",
             multiple=True,
             metavar="FORMAT",
-            help="html, docx, pdf, xlsx, md, tex, png, svg or pdf figures; html and pictures if left out. Repeatable.",
+            help="html, docx, pdf, xlsx, md, tex, png, svg, pdf figures; html and pictures if none. Repeatable.",
         ),
     ]
     for option in reversed(options):
