@@ -20,6 +20,7 @@ from soffit.estimate.noncentral import (
     nct_interval,
     nct_sf,
 )
+from soffit.estimate.regression import regress
 
 # t, df, noncentrality, the smaller tail, its probability: E[Φ(a W + b)] by mpmath.quad at 30 digits (see
 # _by_integration below, which recomputes a few of them). Independent computation, evidence A.
@@ -161,6 +162,20 @@ def test_interval_takes_own_degrees_of_freedom() -> None:
     for i in range(3):
         one = nct_interval(t[i], df[i], 0.9)
         np.testing.assert_allclose([low[i], high[i]], [float(one[0]), float(one[1])], rtol=1e-10)
+
+
+@pytest.mark.simulation
+def test_interval_of_the_appraisal_ratio_covers() -> None:
+    # t = AR·√(T/(1 + θ̂f²)) is noncentral t with T − K − 1 df: 6,000 assets on the same two factors, short sample.
+    rng = np.random.default_rng(21)
+    T, N, truth = 24, 6000, 0.35
+    factors = rng.normal(0.2, 1.0, (T, 2))
+    returns = truth + factors @ rng.normal(1.0, 0.5, (2, N)) + rng.standard_normal((T, N))
+    fit = regress(returns, factors)
+    low, high = (bound / fit.t_scale for bound in nct_interval(fit.classical_t, fit.fit.df, 0.9))
+    error = np.sqrt(0.05 * 0.95 / N)
+    assert abs((truth < low).mean() - 0.05) < 3.3 * error
+    assert abs((truth > high).mean() - 0.05) < 3.3 * error
 
 
 def test_missing_and_infinite_ratios() -> None:

@@ -58,7 +58,9 @@ def _assets(found: SharpeTable) -> str:
     if above == len(assets):
         count = f"All {above:,} assets lie"
     else:
-        count = f"Of {len(assets):,} assets, {above or 'none'} {'lies' if above < 2 else 'lie'}"
+        count = (
+            f"Of {len(assets):,} assets, {f'{above:,}' if above else 'none'} {'lies' if above < 2 else 'lie'}"
+        )
     return f"{count} above zero at {level}; the highest is {assets.index[best]} at {shown}."
 
 
@@ -70,7 +72,7 @@ def _deflated(found: SharpeTable) -> str:
     kept = known[known > found.level].sort_values(ascending=False, kind="stable")
     names = f" ({join_names(str(name) for name in kept.index)})" if len(kept) else ""
     stays = "stays" if len(kept) == 1 else "stay"
-    count = str(len(kept)) if len(kept) else "none"
+    count = f"{len(kept):,}" if len(kept) else "none"
     return (
         f"Held against the best of {found.tests:,} trials without skill, {count} of them {stays} above it with more "
         f"than {show(found.level, NumberForm.SHARE)} probability{names}."
