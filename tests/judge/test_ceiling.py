@@ -13,6 +13,7 @@ from soffit.estimate.regression import regress
 from soffit.estimate.statistic import NotApplicable
 from soffit.judge.ceiling import AlphaTable, JointCeiling, Status, bound_factor
 from soffit.judge.joint import joint_alphas
+from soffit.judge.multiplicity import Adjustment
 from soffit.settings import CeilingForm
 
 FORMS = list(CeilingForm)
@@ -164,7 +165,7 @@ def test_ceiling_below_the_factors_is_undefined_on_top_but_not_alone() -> None:
     assert set(below.status) == {Status.UNDEFINED}
     assert np.isnan(below.bound).all()
     assert np.isnan(below.pvalues).all()
-    assert np.isnan(below.adjusted("holm")).all()
+    assert np.isnan(below.adjusted(Adjustment.HOLM)).all()
     assert Status.UNDEFINED not in set(table.at(0.5 * theta, CeilingForm.ALONE).status)
     # At exactly the factors' own ratio nothing is left for any asset: the bound is zero, not undefined.
     at = table.at(theta, CeilingForm.ON_FACTORS)
@@ -181,10 +182,13 @@ def test_adjustments_by_hand() -> None:
     for rank, position in enumerate(order):
         running = max(running, min(1.0, (len(order) - rank) * verdicts.pvalues[position]))
         expected[position] = running
-    np.testing.assert_allclose(verdicts.adjusted("holm"), expected, rtol=1e-12)
+    np.testing.assert_allclose(verdicts.adjusted(Adjustment.HOLM), expected, rtol=1e-12)
+    # Three times as many trials as assets: the smallest p-value times all of them (Holm's first step).
+    more = verdicts.adjusted(Adjustment.HOLM, trials=3 * len(order))
+    assert more.min() == pytest.approx(min(1.0, 3 * len(order) * verdicts.pvalues.min()))
     harmonic = sum(1 / rank for rank in range(1, len(order) + 1))
     smallest = verdicts.pvalues.min() * len(order) * harmonic
-    assert verdicts.adjusted("fdr_by").min() <= min(1.0, smallest) + 1e-12
+    assert verdicts.adjusted(Adjustment.BENJAMINI_YEKUTIELI).min() <= min(1.0, smallest) + 1e-12
 
 
 @pytest.mark.parametrize("bad", [-0.1, float("nan"), float("inf")])

@@ -25,7 +25,7 @@ class Family(StrEnum):
 
 @dataclass(frozen=True)
 class Distribution:
-    """A reference distribution with its degrees of freedom.
+    """A central reference distribution with its degrees of freedom; noncentral tails are in `noncentral`.
 
     Parameters
     ----------
@@ -33,26 +33,20 @@ class Distribution:
         Which family.
     df : tuple of float
         Degrees of freedom: none for the normal, one for t and chi-squared, two for F.
-    noncentrality : float
-        Zero for a central distribution.
     """
 
     family: Family
     df: tuple[float, ...] = ()
-    noncentrality: float = 0.0
 
     def _law(self) -> tuple[Any, tuple[float, ...]]:
         """The family's functions and its parameters; frozen laws would cost a millisecond each."""
-        if self.noncentrality:
-            shifted = {Family.STUDENT_T: stats.nct, Family.F: stats.ncf, Family.CHI2: stats.ncx2}
-            return shifted[self.family], (*self.df, self.noncentrality)
-        central = {
+        laws = {
             Family.NORMAL: stats.norm,
             Family.STUDENT_T: stats.t,
             Family.F: stats.f,
             Family.CHI2: stats.chi2,
         }
-        return central[self.family], self.df
+        return laws[self.family], self.df
 
     def sf(self, value: float) -> float:
         """Probability of a draw above `value`."""
@@ -73,9 +67,7 @@ class Distribution:
         """How a table prints it: ``F(12, 806)``, ``t(817)``, ``normal``."""
         if not self.df:
             return str(self.family)
-        inside = ", ".join(f"{value:g}" for value in self.df)
-        tail = f"; noncentrality {self.noncentrality:.3g}" if self.noncentrality else ""
-        return f"{self.family}({inside}{tail})"
+        return f"{self.family}({', '.join(f'{value:g}' for value in self.df)})"
 
 
 @dataclass(frozen=True)

@@ -18,12 +18,12 @@ from functools import cached_property
 
 import numpy as np
 import numpy.typing as npt
-from statsmodels.stats.multitest import multipletests
 
 from soffit.errors import SettingError
 from soffit.estimate.noncentral import ncf_interval, ncf_lambda_at, ncf_sf, nct_abs_sf, nct_interval
 from soffit.estimate.statistic import Interval, NotApplicable
 from soffit.judge.joint import JointAlphas
+from soffit.judge.multiplicity import Adjustment, adjusted_pvalues
 from soffit.settings import CeilingForm
 
 __all__ = ["AlphaTable", "AssetVerdicts", "JointCeiling", "Status", "bound_factor", "largest_sharpe"]
@@ -212,13 +212,9 @@ class AssetVerdicts:
             p[usable] = nct_abs_sf(np.abs(t), table.df[usable], self.factor[usable] * table.t_scale[usable])
         return p
 
-    def adjusted(self, method: str) -> Floats:
-        """P-values adjusted over the assets: ``"holm"`` or ``"fdr_by"`` (Benjamini and Yekutieli 2001)."""
-        adjusted = np.full(len(self.pvalues), np.nan)
-        there = ~np.isnan(self.pvalues)
-        if there.any():
-            adjusted[there] = multipletests(self.pvalues[there], method=method)[1]
-        return adjusted
+    def adjusted(self, method: Adjustment, *, trials: int = 1) -> Floats:
+        """P-values adjusted over the assets, or over `trials` where more than the assets were tried."""
+        return adjusted_pvalues(self.pvalues, method, trials=trials)
 
 
 def largest_sharpe(theta_f2: float, noncentrality: float, periods: int) -> float:

@@ -12,6 +12,7 @@ import pandas as pd
 
 from soffit.estimate.statistic import Interval, NotApplicable
 from soffit.judge.ceiling import AssetVerdicts, JointCeiling, Status, bound_factor
+from soffit.judge.multiplicity import Adjustment
 from soffit.settings import CeilingForm
 from soffit.study.factor_regression import FactorRegression
 from soffit.study.joint_test import JointTest
@@ -77,10 +78,13 @@ class CeilingMap:
         The alphas.
     joint : JointTest
         The alphas together.
+    trials : int
+        Strategies or specifications tried in all; enters the adjusted p-values.
     """
 
     regression: FactorRegression
     joint: JointTest
+    trials: int = 1
     _known_pvalues: dict[bytes, Floats | NotApplicable] = field(default_factory=dict, repr=False)
 
     @property
@@ -269,8 +273,8 @@ class CeilingVerdict:
         out["bound"] = self.bound
         out["status"] = self.status
         out["p"] = self.verdicts.pvalues
-        out["p_holm"] = self.verdicts.adjusted("holm")
-        out["p_by"] = self.verdicts.adjusted("fdr_by")
+        out["p_holm"] = self.verdicts.adjusted(Adjustment.HOLM, trials=self.map.trials)
+        out["p_by"] = self.verdicts.adjusted(Adjustment.BENJAMINI_YEKUTIELI, trials=self.map.trials)
         out["periods"] = regression["periods"]
         return out
 

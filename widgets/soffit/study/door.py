@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any, Concatenate, ParamSpec, TypeVar, cast
 import pandas as pd
 
 from soffit.estimate.statistic import NotApplicable
+from soffit.estimate.steps import Steps, drained
 from soffit.hedge.costs import LegKind
 from soffit.hedge.ticket import Instrument, Rounding, Ticket
 from soffit.hedge.walk_forward import WalkSchedule
@@ -88,6 +89,27 @@ def computed(
             return found
 
         return cast("Callable[Concatenate[Study, P], R]", once)
+
+    return decorate
+
+
+def in_steps(
+    *depends: str,
+) -> Callable[[Callable[[Study], Steps[R]]], Callable[[Study], Steps[R]]]:
+    """Like :func:`computed`, for a method that works in steps: what was once worked out takes no further step."""
+    for name in depends:
+        Settings.note(name)
+
+    def decorate(method: Callable[[Study], Steps[R]]) -> Callable[[Study], Steps[R]]:
+        @wraps(method)
+        def once(self: Study) -> Steps[R]:
+            key = (method.__qualname__, tuple(_hashable(self.settings.get(name)) for name in depends))
+            if key not in self._results:
+                self._results[key] = yield from method(self)
+            found: R = self._results[key]
+            return found
+
+        return once
 
     return decorate
 
@@ -213,11 +235,16 @@ class Study:
             joint.fit, joint.alphas, factors, lags=lags, nominal=round(1.0 - settings.level, 12)
         )
 
-    @computed(*REGRESSION, "seed")
     def wald_sizes(self) -> tuple[OverRejection | NotApplicable, OverRejection | NotApplicable]:
         """How often the robust and the HAC Wald test reject zero alphas that are truly zero, by simulation."""
+        return drained(self.wald_sizes_steps())
+
+    @in_steps(*REGRESSION, "seed")
+    def wald_sizes_steps(self) -> Steps[tuple[OverRejection | NotApplicable, OverRejection | NotApplicable]]:
+        """Steps of :meth:`wald_sizes`, for :func:`soffit.engine.run_here` or a panel's progress bar."""
         wald, joint = self.wald(), self.joint_test()
-        return robust_sizes(wald, joint, round(1.0 - self.settings.level, 12), self.settings.seed)
+        size = round(1.0 - self.settings.level, 12)
+        return (yield from robust_sizes(wald, joint, size, self.settings.seed))
 
     @computed(*SAMPLE)
     def large_n(self) -> LargeN:
@@ -255,10 +282,10 @@ class Study:
         settings = self.settings.changed({name: value for name, value in values.items() if value is not None})
         return AlphaUnderCeiling(self.joint_test(), settings.ceiling, settings.ceiling_form)
 
-    @computed(*REGRESSION)
+    @computed(*REGRESSION, "trials")
     def ceiling_map(self) -> CeilingMap:
         """What the alphas say about ceilings, before one is named."""
-        return CeilingMap(self.regression(), self.joint_test())
+        return CeilingMap(self.regression(), self.joint_test(), self.settings.trials)
 
     def ceiling(self, ceiling: float | None = None, form: CeilingForm | None = None) -> CeilingVerdict:
         """Hold a Sharpe ceiling against the alphas.

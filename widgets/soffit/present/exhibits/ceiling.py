@@ -278,6 +278,7 @@ def verdict_table(study: Study) -> TableSpec:
         Column("periods", "T", NumberForm.COUNT),
     )
     frame = verdict.table.sort_values("needed", ascending=False, kind="stable")
+    tests = max(len(frame), verdict.map.trials)
     return TableSpec(
         key="ceiling-verdicts",
         title=f"Alphas under a Sharpe ceiling of {show(verdict.ceiling, ratio)} a year",
@@ -285,7 +286,7 @@ def verdict_table(study: Study) -> TableSpec:
         frame=frame,
         footnote=(
             f"{_footnote(study, verdict)} Exact p: probability of so large an appraisal ratio where the true one "
-            "is at the bound; Holm over the assets. A dash: undefined, the factors alone break the ceiling."
+            f"is at the bound; Holm over {tests:,} tests. A dash: undefined, the factors alone break the ceiling."
         ),
     )
 
