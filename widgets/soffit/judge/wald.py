@@ -7,6 +7,7 @@ often, and the numbers here say how often.
 
 from __future__ import annotations
 
+import time
 from dataclasses import dataclass
 from enum import StrEnum
 
@@ -18,6 +19,7 @@ from soffit.errors import EstimationError
 from soffit.estimate.hac import newey_west_lags
 from soffit.estimate.regression import Regression
 from soffit.estimate.statistic import Distribution, Family, NotApplicable, TestStatistic
+from soffit.estimate.steps import Progress, Steps, drained
 from soffit.judge.joint import JointAlphas
 from soffit.settings import LagRule
 
@@ -33,6 +35,7 @@ __all__ = [
     "linearmodels_wald",
     "robust_wald",
     "simulated_size",
+    "size_steps",
     "wald_lags",
     "wald_tests",
 ]
@@ -45,6 +48,7 @@ LINEARMODELS_BYTES = 128 * 2**20
 _NULL = "all alphas are zero"
 _COPIES = 4.2  # M×M arrays linearmodels holds at its peak, M = N(K+1)+K; measured at N = 2,000, K = 6
 _DEPENDENT = 1e-9
+_TELL = 0.03  # seconds between two words of progress
 
 
 class WaldEngine(StrEnum):
@@ -397,6 +401,14 @@ def simulated_size(
     time its distribution does not depend on their covariance: one simulation with unit variances serves all (Dufour
     and Khalaf 2002, Journal of Econometrics 106).
     """
+    steps = size_steps(factors, count, lags=lags, debiased=debiased, nominal=nominal, draws=draws, seed=seed)
+    return drained(steps)
+
+
+def size_steps(
+    factors: Floats, count: int, *, lags: int, debiased: bool, nominal: float, draws: int, seed: int
+) -> Steps[OverRejection | NotApplicable]:
+    """Steps of :func:`simulated_size`, a few draws each."""
     T, width = factors.shape
     if count >= T - width:
         return NotApplicable(
@@ -407,7 +419,11 @@ def simulated_size(
     influence = alpha_influence(factors)
     critical = float(special.chdtri(count, nominal)) * (T / (T - width - 1) if debiased else 1.0)
     rejected = 0
-    for _ in range(draws):
+    told = time.monotonic()
+    for draw in range(draws):
+        if time.monotonic() - told > _TELL:
+            yield Progress(draw, draws, f"Simulating the size of the test: {_name(lags)}")
+            told = time.monotonic()
         noise = rng.standard_normal((T, count))
         alpha = influence @ noise
         residuals = noise - basis @ (basis.T @ noise)

@@ -12,8 +12,9 @@ from statsmodels.stats.multitest import multipletests
 
 from soffit.estimate.diagnostics import AssetTests, ResidualChecks, residual_checks
 from soffit.estimate.statistic import NotApplicable, TestStatistic
+from soffit.estimate.steps import Steps
 from soffit.judge.power import GRSPower
-from soffit.judge.wald import OverRejection, WaldTests, simulated_size
+from soffit.judge.wald import OverRejection, WaldTests, size_steps
 from soffit.settings import Settings
 from soffit.study.joint_test import JointTest
 
@@ -156,8 +157,8 @@ class JointPower:
 
 def robust_sizes(
     wald: WaldTests, joint: JointTest, nominal: float, seed: int
-) -> tuple[OverRejection | NotApplicable, OverRejection | NotApplicable]:
-    """Simulated sizes of the robust and the HAC Wald test.
+) -> Steps[tuple[OverRejection | NotApplicable, OverRejection | NotApplicable]]:
+    """Simulated sizes of the robust and the HAC Wald test, in steps.
 
     Parameters
     ----------
@@ -172,13 +173,13 @@ def robust_sizes(
 
     Returns
     -------
-    tuple of OverRejection or NotApplicable
+    Steps of tuple of OverRejection or NotApplicable
         Not applicable where the tests do not exist or the sample is too large to simulate while a person waits;
         :func:`soffit.judge.wald.simulated_size` has no such limit.
     """
     factors, count = joint.block.factors, joint.alphas.count
 
-    def size(test: TestStatistic | NotApplicable, lags: int) -> OverRejection | NotApplicable:
+    def size(test: TestStatistic | NotApplicable, lags: int) -> Steps[OverRejection | NotApplicable]:
         name = "The simulated size"
         if isinstance(test, NotApplicable):
             return NotApplicable(name, test.reason)
@@ -186,15 +187,17 @@ def robust_sizes(
             return NotApplicable(
                 name, f"{count:,} assets over {joint.alphas.periods:,} periods take too long"
             )
-        return simulated_size(
-            factors,
-            count,
-            lags=lags,
-            debiased=wald.debiased,
-            nominal=nominal,
-            draws=_SIMULATED_DRAWS,
-            seed=seed,
+        return (
+            yield from size_steps(
+                factors,
+                count,
+                lags=lags,
+                debiased=wald.debiased,
+                nominal=nominal,
+                draws=_SIMULATED_DRAWS,
+                seed=seed,
+            )
         )
 
-    robust = size(wald.robust, 0)
-    return robust, size(wald.hac, wald.lags) if wald.lags else robust
+    robust = yield from size(wald.robust, 0)
+    return robust, (yield from size(wald.hac, wald.lags)) if wald.lags else robust
