@@ -49,7 +49,10 @@ def test_demo_writes_a_memo_and_its_data(tmp_path: Path) -> None:
     assert {"memo.html", "returns.csv", "factors.csv"} <= written
     page = unescape((tmp_path / "memo" / "memo.html").read_text(encoding="utf-8"))
     assert build("ceiling", demo_study()).finding.text in page
-    assert {".png", ".svg", ".pdf"} <= {Path(name).suffix for name in written}
+    assert {".png", ".svg"} <= {Path(name).suffix for name in written}
+    audit = _run("verify", tmp_path / "memo")
+    assert audit.exit_code == 0, audit.output
+    assert "nothing differs" in audit.output
 
 
 @pytest.mark.parametrize(
@@ -82,6 +85,28 @@ def test_missing_and_empty_files(files: tuple[Path, Path], tmp_path: Path) -> No
     result = _run("judge", empty, "--factors", files[1])
     assert result.exit_code == 3
     assert "empty" in result.output
+
+
+def test_verify_names_what_was_tampered_with(files: tuple[Path, Path], tmp_path: Path) -> None:
+    out = tmp_path / "memo"
+    assert _run("judge", files[0], "--factors", files[1], "--out", out, "--format", "html").exit_code == 0
+    page = out / "memo.html"
+    page.write_text(page.read_text(encoding="utf-8").replace("240", "241", 1), encoding="utf-8")
+    result = _run("verify", out)
+    assert result.exit_code == 5
+    assert "memo.html" in result.output or "Table" in result.output
+    nothing = _run("verify", tmp_path)
+    assert nothing.exit_code == 3
+    assert "no pack" in nothing.output.casefold()
+
+
+def test_report_refuses_a_misspelt_parameter_before_it_runs(files: tuple[Path, Path], tmp_path: Path) -> None:
+    study = tmp_path / "study.toml"
+    study.write_text('[data]\nreturns = "returns.csv"\nfactors = "factors.csv"\n', encoding="utf-8")
+    result = _run("report", study, "--set", "cieling=0.8", "--out", tmp_path / "report")
+    assert result.exit_code == 2
+    assert "did you mean 'ceiling'" in result.output
+    assert not (tmp_path / "report").exists()
 
 
 def test_help_names_the_commands_and_the_exit_codes() -> None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import sys
-from collections.abc import Callable
+from collections.abc import Callable, Iterable, Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -13,6 +13,8 @@ from soffit import __version__
 from soffit.errors import EstimationError, InputError, SettingError, SoffitError, nearest
 
 if TYPE_CHECKING:
+    from soffit.memo import Inputs
+    from soffit.present.spec import Exhibit
     from soffit.settings import Settings
     from soffit.study import Study
 
@@ -78,7 +80,7 @@ def _study_options(command: Callable[..., None]) -> Callable[..., None]:
             "formats",
             multiple=True,
             metavar="FORMAT",
-            help="html, docx, pdf, xlsx, md, tex, png, svg, pdf figures; html and pictures if none. Repeatable.",
+            help="html, docx, pdf, xlsx, md, tex, png, svg, pdf figures; html, png and svg if none. Repeatable.",
         ),
     ]
     for option in reversed(options):
@@ -101,19 +103,18 @@ def demo(
     Its files are written beside the memo, so that every number can be re-run with 'soffit judge'.
     """
     from soffit.demo import demo_frames
+    from soffit.memo import Inputs
     from soffit.settings import Histories, Settings
-    from soffit.study import Study
 
     wanted = _formats(formats)
     folder = out or Path("soffit-memo")
     folder.mkdir(parents=True, exist_ok=True)
     returns, factors = demo_frames()
-    files = folder / "returns.csv", folder / "factors.csv"
-    returns.to_csv(files[0], float_format="%.8f")
-    factors.to_csv(files[1], float_format="%.8f")
+    returns.to_csv(folder / "returns.csv", float_format="%.8f")
+    factors.to_csv(folder / "factors.csv", float_format="%.8f")
     base = Settings.load(settings_file) if settings_file else Settings(histories=Histories.OWN)
-    study = Study.open(*files, risk_free="Cash", settings=_with(base, sets, ceiling))
-    _report(study, folder, wanted)
+    inputs = Inputs("returns.csv", "factors.csv", {"risk_free": "Cash"}, folder)
+    _judge(inputs, _with(base, sets, ceiling), folder, wanted)
 
 
 @main.command()
@@ -147,14 +148,82 @@ def judge(
     Example:
       soffit judge returns.csv --factors factors.csv --ceiling 1.0 --out memo
     """
+    from soffit.memo import Inputs
     from soffit.settings import Settings
-    from soffit.study import Study
 
     wanted = _formats(formats)
     settings = _with(Settings.load(settings_file) if settings_file else Settings(), sets, ceiling)
-    options: dict[str, Any] = {"risk_free": risk_free, "excess": excess, "units": units, "roles": roles}
+    options: dict[str, Any] = {"risk_free": risk_free, "excess": excess, "units": units}
+    options["roles"] = str(roles) if roles else None
     given = {name: value for name, value in options.items() if value is not None}
-    _report(Study.open(returns, factors, settings=settings, **given), out, wanted)
+    _judge(Inputs(str(returns), str(factors or ""), given), settings, out, wanted)
+
+
+@main.command()
+@click.argument("source", type=click.Path(path_type=Path))
+@click.option(
+    "--set",
+    "sets",
+    multiple=True,
+    metavar="NAME=VALUE",
+    help="Change one parameter, such as ceiling=0.8 or hedge.window=48. May be repeated.",
+)
+@click.option(
+    "--sweep",
+    metavar="NAME=VALUES",
+    help="One report for each value, such as ceiling=[0.6,0.8,1.0], and a page that compares them.",
+)
+@click.option(
+    "--out", type=click.Path(file_okay=False, path_type=Path), default=Path("report"), help="Folder."
+)
+@click.option("--fresh", is_flag=True, help="Compute everything again, whatever an earlier run finished.")
+def report(source: Path, sets: tuple[str, ...], sweep: str | None, out: Path, fresh: bool) -> None:
+    r"""Run a study file, or a notebook with a parameters cell, without a browser.
+
+    An unknown or misspelt parameter is refused before anything runs. A section that fails is named in the report;
+    the rest is delivered, with exit code 5.
+
+    \b
+    Example:
+      soffit report study.toml --set ceiling=0.8 --out report
+    """
+    from soffit.memo.notebook import run_report
+    from soffit.memo.sweep import run_sweep
+
+    values = dict(_parsed(item) for item in sets)
+    if sweep is None:
+        run = run_report(source, values, out, resume=not fresh)
+        _say_run(run.folder, run.files, run.failures, run.resumed)
+        raise SystemExit(0 if run.ok else 5)
+    name, swept = _parsed(sweep)
+    done = run_sweep(
+        source, name, swept if isinstance(swept, list) else [swept], out, sets=values, resume=not fresh
+    )
+    for value, run in done.runs:
+        click.secho(f"{name} = {value}", bold=True)
+        _say_run(run.folder, run.files, run.failures, run.resumed)
+    _say_run(out / "comparison", done.comparison, done.failures, False)
+    raise SystemExit(0 if done.ok else 5)
+
+
+@main.command()
+@click.argument("pack", type=click.Path(path_type=Path))
+def verify(pack: Path) -> None:
+    """Recompute every number in the folder PACK from its inputs, and say which differ."""
+    from soffit.memo import verify as audit
+
+    found = audit(pack)
+    click.echo(str(found))
+    raise SystemExit(0 if found.ok else 5)
+
+
+def _say_run(folder: Path, files: Iterable[Path], failures: Mapping[str, str], resumed: bool) -> None:
+    if resumed:
+        click.echo(f"Nothing changed since the last run in {folder}.")
+    for path in files:
+        click.echo(f"Wrote {path}")
+    for section, reason in failures.items():
+        click.secho(f"Not delivered: {section}. {reason}", err=True, fg="red")
 
 
 def _with(settings: Settings, sets: tuple[str, ...], ceiling: float | None) -> Settings:
@@ -169,7 +238,7 @@ def _formats(names: tuple[str, ...]) -> tuple[str, ...]:
     from soffit.memo import Format
 
     if not names:
-        return Format.HTML, Format.PNG, Format.SVG, Format.PDF_FIGURES
+        return Format.HTML, Format.PNG, Format.SVG
     for name in names:
         if name not in list(Format):
             raise SettingError(f"There is no format '{name}'", remedy=nearest(name, list(Format)))
@@ -189,12 +258,13 @@ def _parsed(item: str) -> tuple[str, Any]:
         return name.strip(), text.strip()
 
 
-def _report(study: Study, out: Path | None, formats: tuple[str, ...]) -> None:
+def _judge(inputs: Inputs, settings: Settings, out: Path | None, formats: tuple[str, ...]) -> None:
     """Print the sample, the findings and the verdicts, and write the memo where one is asked for."""
     from soffit.present.cautions import CAUTIONS
     from soffit.present.exhibits import build
     from soffit.present.plain import table_text
 
+    study = inputs.open(settings)
     exhibits = [build(key, study) for key in ("regression", "joint", "ceiling")]
     click.echo(exhibits[-1].sample)
     for exhibit in exhibits:
@@ -212,15 +282,17 @@ def _report(study: Study, out: Path | None, formats: tuple[str, ...]) -> None:
         for entry in warnings:
             click.echo(f"{entry.severity}: {entry.message}")
     if out is not None:
-        _write_memo(study, exhibits, out, formats)
+        _write_memo(study, inputs, exhibits, out, formats)
     click.echo()
     click.echo(" ".join((CAUTIONS[0], *CAUTIONS[-2:])))
 
 
-def _write_memo(study: Study, exhibits: list[Any], out: Path, formats: tuple[str, ...]) -> None:
+def _write_memo(
+    study: Study, inputs: Inputs, exhibits: list[Exhibit], out: Path, formats: tuple[str, ...]
+) -> None:
     from soffit.memo import Pack, write
 
-    pack = Pack(study, title="Alphas under a Sharpe ceiling")
+    pack = Pack(study, title="Alphas under a Sharpe ceiling", inputs=inputs)
     for exhibit in exhibits:
         pack.keep(exhibit)
     click.echo()
