@@ -6,7 +6,19 @@ from soffit.memo.audit import Audit, Difference, verify
 from soffit.memo.inputs import Inputs
 from soffit.memo.layout import Label, Memo
 from soffit.memo.pack import Pack
-from soffit.memo.study_file import StudyFile
+from soffit.memo.study_file import ReportPlan, StudyFile
 from soffit.memo.writing import Format, write
 
-__all__ = ["Audit", "Difference", "Format", "Inputs", "Label", "Memo", "Pack", "StudyFile", "verify", "write"]
+__all__ = [
+    "Audit",
+    "Difference",
+    "Format",
+    "Inputs",
+    "Label",
+    "Memo",
+    "Pack",
+    "ReportPlan",
+    "StudyFile",
+    "verify",
+    "write",
+]

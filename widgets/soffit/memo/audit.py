@@ -285,6 +285,9 @@ class _Check:
         for part in plan.parts:
             if part.words:
                 pack.say(part.words)
+            elif part.failed:
+                study = self.study.changed(part.values)
+                pack.fail(part.exhibit, part.failed, labels=part.labels, study=study)
             else:
                 pack.keep(next(made), labels=part.labels)
         for key, text in plan.captions.items():

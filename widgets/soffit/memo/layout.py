@@ -184,9 +184,10 @@ class Section:
 
 @dataclass(frozen=True)
 class Remark:
-    """A paragraph of the analyst's own."""
+    """A paragraph of the analyst's own, or the word that a section failed."""
 
     words: Runs
+    failed: bool = False
 
 
 @dataclass(frozen=True)

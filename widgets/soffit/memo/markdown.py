@@ -15,7 +15,7 @@ MOST_ROWS = 500
 # What CommonMark and its extensions for tables, mathematics and mentions give a meaning to anywhere …
 _ANYWHERE = re.compile(r"([\\`*_{}\[\]<>#|~$&^@])")
 # … and at the start of a block.
-_AT_START = re.compile(r"^(\s*)([-+=:>]|\d+(?=[.)]))")
+_AT_START = re.compile(r"^(\s*)([-+=:>]|\d{1,9}(?=[.)](?:\s|$)))")
 
 
 def escape(text: str) -> str:
@@ -66,7 +66,7 @@ def markdown(memo: Memo) -> str:
     )
     blocks = [*head, findings]
     for part in memo.body:
-        blocks += [_words(part.words)] if isinstance(part, Remark) else _section(part)
+        blocks += _remark(part) if isinstance(part, Remark) else _section(part)
     blocks += ["## Cautions", "\n".join(f"- {escape(text)}" for text in memo.cautions)]
     blocks += ["## Appendix A. Methods and sources"]
     blocks += ["\n".join(f"{number}. {escape(text)}" for number, text in enumerate(memo.references, 1))]
@@ -75,6 +75,11 @@ def markdown(memo: Memo) -> str:
         blocks.append(f"To make this memo again: `{memo.provenance.command}`")
     blocks += [_simple(table) for table in memo.provenance.tables]
     return "\n\n".join(block for block in blocks if block) + "\n"
+
+
+def _remark(remark: Remark) -> list[str]:
+    text = _words(remark.words)
+    return [f"**{text}**" if remark.failed else text]
 
 
 def _section(section: Section) -> list[str]:

@@ -20,7 +20,7 @@ from soffit.present.spec import Exhibit, FigureSpec, TableSpec
 from soffit.settings import Settings
 from soffit.study import Study
 
-__all__ = ["KeptPart", "Pack"]
+__all__ = ["FailedPart", "KeptPart", "Pack"]
 
 S = TypeVar("S", FigureSpec, TableSpec)
 
@@ -36,6 +36,33 @@ class KeptPart:
     def exhibit(self) -> Exhibit:
         """The exhibit."""
         return self.kept.exhibit
+
+    @property
+    def key(self) -> str:
+        """Key of the exhibit."""
+        return self.kept.exhibit.key
+
+
+@dataclass(frozen=True)
+class FailedPart:
+    """A section that could not be made: it is named where it would stand, and the rest is delivered.
+
+    Parameters
+    ----------
+    key : str
+        Key of the exhibit.
+    reason : str
+        Why, in one sentence.
+    settings : Settings
+        The settings it was asked for with.
+    labels : tuple of Label
+        Labels of its section.
+    """
+
+    key: str
+    reason: str
+    settings: Settings
+    labels: tuple[Label, ...] = ()
 
 
 class Pack:
@@ -77,7 +104,7 @@ class Pack:
         self.title, self.author, self.dated = title, author, dated
         self.labels = _labels(labels)
         self.inputs = inputs
-        self._parts: list[KeptPart | str] = [KeptPart(_kept(item, study)) for item in study.kept]
+        self._parts: list[KeptPart | FailedPart | str] = [KeptPart(_kept(item, study)) for item in study.kept]
         self._captions: dict[str, str] = {}
 
     def __len__(self) -> int:
@@ -90,11 +117,16 @@ class Pack:
     @property
     def contents(self) -> tuple[str, ...]:
         """What is in the pack, in order: keys of exhibits, and ``"words"`` for paragraphs."""
-        return tuple(part.exhibit.key if isinstance(part, KeptPart) else "words" for part in self._parts)
+        return tuple("words" if isinstance(part, str) else part.key for part in self._parts)
 
     @property
-    def parts(self) -> tuple[KeptPart | str, ...]:
-        """The kept exhibits and the analyst's paragraphs, in order."""
+    def failures(self) -> tuple[FailedPart, ...]:
+        """The sections that could not be made."""
+        return tuple(part for part in self._parts if isinstance(part, FailedPart))
+
+    @property
+    def parts(self) -> tuple[KeptPart | FailedPart | str, ...]:
+        """The kept exhibits, the analyst's paragraphs and the sections that failed, in order."""
         return tuple(self._parts)
 
     @property
@@ -137,6 +169,14 @@ class Pack:
             )
         made = build(exhibit, origin) if isinstance(exhibit, str) else exhibit
         self._parts.append(KeptPart(_kept(made, origin), _labels(labels)))
+        return self
+
+    def fail(
+        self, key: str, reason: str, *, labels: Iterable[Label] = (), study: Study | None = None
+    ) -> Self:
+        """Say where a section would stand that it could not be made, and why."""
+        settings = (study or self.study).settings
+        self._parts.append(FailedPart(key, reason, settings, _labels(labels)))
         return self
 
     def say(self, text: str) -> Self:
@@ -205,6 +245,10 @@ class Pack:
         for part in self._parts:
             if isinstance(part, str):
                 body.append(Remark(runs(part, anchors)))
+            elif isinstance(part, FailedPart):
+                body.append(
+                    Remark((plain(f"Not delivered: the section '{part.key}'. {part.reason}"),), failed=True)
+                )
             else:
                 body.append(self._section(done, part, figures[done], tables[done], references))
                 done += 1

@@ -61,15 +61,16 @@ def _data(memo: Memo) -> dict[str, Any]:
         "span": memo.span,
         "width": MEMO_WIDTHS["page"] * 25.4,
         "sections": [{"finding": part.finding, "where": _runs(part.where)} for part in memo.sections],
-        "body": [
-            {"kind": "remark", "words": _runs(part.words)} if isinstance(part, Remark) else _section(part)
-            for part in memo.body
-        ],
+        "body": [_remark(part) if isinstance(part, Remark) else _section(part) for part in memo.body],
         "cautions": list(memo.cautions),
         "references": list(memo.references),
         "command": page.command,
         "simple": [_simple(table) for table in (page.facts, *page.tables)],
     }
+
+
+def _remark(remark: Remark) -> dict[str, Any]:
+    return {"kind": "remark", "words": _runs(remark.words), "failed": remark.failed}
 
 
 def _section(section: Section) -> dict[str, Any]:

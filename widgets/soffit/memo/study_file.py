@@ -11,7 +11,7 @@ from typing import Any
 from soffit.errors import InputError, SettingError, nearest
 from soffit.memo.inputs import Inputs
 from soffit.memo.layout import Label
-from soffit.memo.pack import KeptPart, Pack
+from soffit.memo.pack import FailedPart, KeptPart, Pack
 from soffit.present.exhibits import EXHIBITS
 from soffit.settings import Settings
 from soffit.study import Study
@@ -35,6 +35,8 @@ class Part:
         Settings of this exhibit that differ from the study's, by dotted name.
     unset : tuple of str
         Settings that the study has and this exhibit leaves empty.
+    failed : str
+        Why the section could not be made, in a pack that says so; it is tried again when the file is run.
     labels : tuple of Label
         Labels of this section.
     """
@@ -44,14 +46,18 @@ class Part:
     settings: Mapping[str, Any] = field(default_factory=dict)
     labels: tuple[Label, ...] = ()
     unset: tuple[str, ...] = ()
+    failed: str = ""
 
     @classmethod
-    def of(cls, part: KeptPart, common: Settings) -> Part:
-        """Part of a report that builds a kept exhibit again."""
-        changed = _differences(part.kept.settings, common)
+    def of(cls, part: KeptPart | FailedPart | str, common: Settings) -> Part:
+        """Part of a report that makes a part of a pack again."""
+        if isinstance(part, str):
+            return cls(words=part)
+        failed = part.reason if isinstance(part, FailedPart) else ""
+        changed = _differences(part.settings if isinstance(part, FailedPart) else part.kept.settings, common)
         given = {name: value for name, value in changed.items() if value is not None}
         unset = tuple(name for name in changed if name not in given)
-        return cls(part.exhibit.key, "", given, part.labels, unset)
+        return cls(part.key, "", given, part.labels, unset, failed)
 
     @property
     def values(self) -> dict[str, Any]:
@@ -69,6 +75,8 @@ class Part:
             values["labels"] = [str(label) for label in self.labels]
         if self.unset:
             values["unset"] = list(self.unset)
+        if self.failed:
+            values["failed"] = self.failed
         return values
 
     @classmethod
@@ -80,7 +88,7 @@ class Part:
         SettingError
             For an unknown name.
         """
-        _check(values, ("exhibit", "words", "settings", "labels", "unset"), "a part of the report")
+        _check(values, ("exhibit", "words", "settings", "labels", "unset", "failed"), "a part of the report")
         if bool(values.get("exhibit")) == bool(values.get("words")):
             raise SettingError("A part of the report is either an exhibit or words", allowed="one of the two")
         return cls(
@@ -89,6 +97,7 @@ class Part:
             dict(values.get("settings", {})),
             _labels(values.get("labels", ())),
             tuple(values.get("unset", ())),
+            values.get("failed", ""),
         )
 
 
@@ -135,10 +144,7 @@ class ReportPlan:
     @classmethod
     def of(cls, pack: Pack, formats: Sequence[str] = ("html", "png")) -> ReportPlan:
         """Plan of what a pack holds."""
-        parts = tuple(
-            Part(words=part) if isinstance(part, str) else Part.of(part, pack.study.settings)
-            for part in pack.parts
-        )
+        parts = tuple(Part.of(part, pack.study.settings) for part in pack.parts)
         return cls(pack.title, pack.author, pack.dated, pack.labels, parts, pack.captions, tuple(formats))
 
     def empty_pack(self, study: Study, inputs: Inputs | None) -> Pack:

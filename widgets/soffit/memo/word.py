@@ -63,7 +63,10 @@ class _Writer:
         self._front()
         for part in memo.body:
             if isinstance(part, Remark):
-                self._runs(self.document.add_paragraph(), part.words)
+                line = self.document.add_paragraph()
+                self._runs(line, part.words)
+                for run in line.runs if part.failed else ():
+                    run.bold = True
             else:
                 self._section(part)
         self._cautions()
