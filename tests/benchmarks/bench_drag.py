@@ -57,7 +57,7 @@ _WATCH = """() => {
     const root = document.querySelector('.soffit-panel');
     const range = root.querySelector('input[type=range]');
     const text = root.querySelector('.soffit-finding p');
-    const line = root.querySelector('.soffit-figure .curve path.line[style*="ceiling"]');
+    const line = root.querySelector('.soffit-moving path.soffit-moving-line');
     const seen = (window.__seen = { inputs: [], frames: [], release: 0, idle: 0 });
     range.addEventListener('input', (e) => seen.inputs.push([e.timeStamp, Number(range.value)]));
     window.addEventListener('pointerup', (e) => (seen.release = e.timeStamp), true);

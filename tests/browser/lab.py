@@ -202,6 +202,8 @@ class Sheet:
             "() => window.jupyterapp.shell.currentWidget?.sessionContext?.session?.kernel?.status === 'idle'",
             timeout=timeout * 1000,
         )
+        # The widget manager restores what the kernel has when it connects; a view made before that is made twice.
+        self.rest(quiet=1.0)
         self.command("notebook:run-all-cells")
         self.rest(timeout=timeout)
 

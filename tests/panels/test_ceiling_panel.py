@@ -12,6 +12,7 @@ from soffit.panels import CeilingPanel
 from soffit.panels.painter import ASSETS, MOVING, Score
 from soffit.panels.session import Session
 from soffit.present.exhibits.ceiling import CEILING_STEPS, ceiling_figures
+from soffit.present.spec import Band, Rule
 from soffit.present.wording.ceiling import ceiling_finding
 from soffit.settings import CeilingForm
 from soffit.study import Study
@@ -56,7 +57,7 @@ def test_an_equal_value_draws_nothing_and_sends_nothing(panel: CeilingPanel) -> 
 
 def test_a_new_ceiling_sends_the_bound_and_no_point(panel: CeilingPanel) -> None:
     figure = next(iter(panel._figures.values()))
-    points = traits(panel, ASSETS) if len(figure.marks(ASSETS)) == 1 else figure.marks(ASSETS)[0]
+    points = figure.marks(ASSETS)[0]
     sent: list[str] = []
     points.observe(lambda change: sent.append(change["name"]))
     before = figure.sent
@@ -102,27 +103,28 @@ def test_turns_come_in_order_so_that_counts_nest(study: Study) -> None:
 def test_the_painter_moves_the_marks_to_where_the_exhibit_has_them(panel: CeilingPanel) -> None:
     panel._views.index = 1
     panel._views.index = 2
-    painter = panel._painter
-    drawn = {}
-    for figure in panel._figures.values():
-        for key in MOVING - {ASSETS}:
-            for mark in figure.marks(key):
-                drawn[f"IPY_MODEL_{mark.model_id}"] = (figure.spec.key, key)
-    assert len(painter.moves) == len(drawn) == 7
+    places = {place["css"]: place for place in panel._painter.figures}
+    assert [len(places[panel.css(spec.key)]["moving"]) for spec in panel._specs] == [3, 3, 1]
     for step in (0, 95, 180, 300):
         study = panel.session.study.changed(ceiling=float(CEILING_STEPS[step]))
-        specs = {spec.key: {m.key: m for m in spec.marks} for spec in ceiling_figures(study)}
-        for move in painter.moves:
-            figure, key = drawn[move["mark"]]
-            built = specs[figure][key]
-            (trait,) = move["traits"]
-            row = np.frombuffer(trait["table"], "<f4").reshape(len(CEILING_STEPS), -1)[step]
-            if key == "ceiling":
-                np.testing.assert_allclose(row, built.at, rtol=1e-6)
-            elif key == "band":
-                np.testing.assert_allclose(row, np.concatenate([built.low, built.high]), rtol=1e-5, atol=1e-7)
-            else:
-                np.testing.assert_allclose(row, built.y, rtol=1e-5, atol=1e-7)
+        for spec in ceiling_figures(study):
+            figure = panel._figures[spec.key]
+            keys = {figure.position(mark.key): mark for mark in spec.marks if mark.key in MOVING - {ASSETS}}
+            for place in places[panel.css(spec.key)]["moving"]:
+                built = keys[place["mark"]]
+                if isinstance(built, Band):
+                    x, y = np.append(built.x, built.x[::-1]), np.append(built.low, built.high[::-1])
+                elif isinstance(built, Rule):
+                    x, y = np.full(2, built.at), np.array(figure.limits[1])
+                else:
+                    x, y = built.x, built.y
+                at = []
+                for name in ("across", "up"):
+                    table = np.frombuffer(place[name], "<f4")
+                    at.append(table if len(table) == len(x) else table.reshape(len(CEILING_STEPS), -1)[step])
+                across, up = figure.shares(x, y)
+                np.testing.assert_allclose(at[0], across, atol=1e-6)
+                np.testing.assert_allclose(at[1], up, atol=1e-6)
 
 
 def test_two_panels_of_one_study_share_slider_and_selection(study: Study) -> None:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -125,7 +125,6 @@ class CeilingPainter(anywidget.AnyWidget):
     outside_below = Bytes().tag(sync=True)
     inside_from = Bytes().tag(sync=True)
     figures = List(Dict()).tag(sync=True)
-    moves = List(Dict()).tag(sync=True)
     shapes = List(Unicode()).tag(sync=True)
 
     def __init__(self, slider: NumberSlider, finding: FindingLine) -> None:
@@ -148,36 +147,46 @@ class CeilingPainter(anywidget.AnyWidget):
 
     def attach(self, drawn: Mapping[str, DrawnFigure], bases: Mapping[str, Floats], score: Score) -> None:
         """Say which marks of which figures move, and where they stand at each step."""
-        figures: list[dict[str, Any]] = []
-        moves: list[dict[str, Any]] = []
-        for css, figure in drawn.items():
-            for mark in figure.spec.marks:
-                if mark.key == ASSETS:
-                    figures.append(
-                        {"css": css, "mark": figure.position(ASSETS), "count": len(score.turns[1])}
-                    )
-                elif mark.key in MOVING:
-                    (target,) = figure.marks(mark.key)
-                    traits = _tables(mark, bases[css], score)
-                    moves.append({"mark": _reference(target), "traits": traits})
-        with self.hold_sync():
-            self.figures, self.moves = figures, moves
+        self.figures = [
+            {
+                "css": css,
+                "marks": len(figure.widget.marks),
+                "count": len(score.turns[1]),
+                "points": figure.position(ASSETS),
+                "moving": [
+                    {"mark": figure.position(mark.key), **_tables(mark, figure, bases[css], score)}
+                    for mark in figure.spec.marks
+                    if mark.key in MOVING - {ASSETS}
+                ],
+            }
+            for css, figure in drawn.items()
+        ]
 
 
-def _tables(mark: Mark, base: Floats, score: Score) -> list[dict[str, Any]]:
-    """For each trait that moves, its rows and its values at every step, one step after the other."""
+def _tables(mark: Mark, figure: DrawnFigure, base: Floats, score: Score) -> dict[str, Any]:
+    """How a mark is painted, and where it stands at every step, in shares of the plot area."""
     at = [
         moved(mark, base, float(factor), float(ceiling))
         for factor, ceiling in zip(score.factor, CEILING_STEPS, strict=True)
     ]
-    rows: Sequence[Any]
-    if isinstance(mark, Rule):
-        name, count, rows = "x", 1, [np.full(2, one.at) for one in at if isinstance(one, Rule)]
-    elif isinstance(mark, Band):
-        name, count, rows = "y", 2, [np.vstack([one.low, one.high]) for one in at if isinstance(one, Band)]
+    if isinstance(mark, Band):
+        # Round the area: along its lower edge and back along the upper one.
+        across, role = np.concatenate([mark.x, mark.x[::-1]]), mark.role
+        up = np.array([np.concatenate([b.low, b.high[::-1]]) for b in at if isinstance(b, Band)])
+    elif isinstance(mark, Line):
+        across, role = np.asarray(mark.x), mark.role
+        up = np.array([line.y for line in at if isinstance(line, Line)])
     else:
-        name, count, rows = "y", 1, [one.y for one in at if isinstance(one, Line)]
-    return [{"name": name, "rows": count, "table": np.array(rows).astype("<f4").tobytes()}]
+        assert isinstance(mark, Rule)
+        across, role = np.array([[rule.at, rule.at] for rule in at if isinstance(rule, Rule)]), mark.role
+        up = np.array(figure.limits[1])
+    across, up = figure.shares(across, up)
+    return {
+        "kind": "area" if isinstance(mark, Band) else "line",
+        "role": role.value,
+        "across": across.astype("<f4").tobytes(),
+        "up": up.astype("<f4").tobytes(),
+    }
 
 
 def base_of(spec: FigureSpec, factor: float) -> Floats:

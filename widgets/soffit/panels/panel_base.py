@@ -234,7 +234,9 @@ class Panel:
 
     def _ipython_display_(self) -> None:
         _displayed(self)
-        display(self.widget)  # type: ignore[no-untyped-call]
+        # Where a live view cannot be shown, the picture says it all: no text in its place.
+        live = {**(self.widget._repr_mimebundle_() or {}), "text/plain": ""}
+        display(live, raw=True)  # type: ignore[no-untyped-call]
         handle = display(HTML(self._still()), display_id=True)  # type: ignore[no-untyped-call]
         if handle is not None:
             self._stills = [handle]

@@ -459,7 +459,7 @@ class DrawnFigure:
                 drawn[key] = (self._placed(key, part), part)
         gone = [mark for mark, _ in self._drawn.values() if mark not in [kept for kept, _ in drawn.values()]]
         marks = [mark for mark, _ in drawn.values()]
-        self._drawn, self.spec = drawn, spec
+        self._drawn, self.spec, self._frame = drawn, spec, frame
         if [*marks, self._ring] != list(self.widget.marks):
             self.widget.marks = [*marks, self._ring]
         free([part for mark in gone for part in (mark, mark.tooltip)])
@@ -469,8 +469,17 @@ class DrawnFigure:
         return [mark for (name, _), (mark, _) in self._drawn.items() if name == key]
 
     def position(self, key: str) -> int:
-        """Position, in drawing order, of the first bqplot mark with this key."""
-        return next(i for i, (name, _) in enumerate(self._drawn) if name == key)
+        """Position, in drawing order, of the first bqplot mark with this key; −1 if there is none."""
+        return next((i for i, (name, _) in enumerate(self._drawn) if name == key), -1)
+
+    @property
+    def limits(self) -> tuple[tuple[float, float], tuple[float, float]]:
+        """Lowest and highest position on each axis."""
+        return self._frame.x, self._frame.y
+
+    def shares(self, x: npt.ArrayLike, y: npt.ArrayLike) -> tuple[Floats, Floats]:
+        """Positions as shares of the plot area, from its left and from its bottom edge."""
+        return _fraction(x, self._frame.x, self.spec.x), _fraction(y, self._frame.y, self.spec.y)
 
     def ring(self, name: str) -> None:
         """Ring the selectable point of this name; an empty or unknown name takes the ring away."""

@@ -1,5 +1,5 @@
-// Plays what the kernel wrote: for every step of the slider the sentence and where the marks stand,
-// for every asset the two ceilings at which its status changes. No formula lives here.
+// Plays what the kernel wrote: for every step of the slider the sentence and where the marks stand, and for
+// every asset the ceilings at which its status changes. No formula lives here.
 
 const WORDS = ["inside", "straddles", "outside", "undefined"];
 const CLASSES = WORDS.map((word) => `soffit-${word}`);
@@ -45,80 +45,135 @@ class Thresholds {
   }
 }
 
-// Sentence and moving marks: once for the model, whatever number of views there are.
+// Where a moving mark stands at each step, in shares of the plot area: across from the left, up from the bottom.
+class Moving {
+  constructor({ kind, role, across, up }, steps) {
+    this.tables = [across, up].map((table) => floats(table, Float32Array));
+    this.length = Math.max(...this.tables.map((table) => table.length)) / steps;
+    this.path = document.createElementNS("http://www.w3.org/2000/svg", "path");
+    this.path.setAttribute("class", `soffit-moving-${kind}`);
+    this.path.style.setProperty("--paint", `var(--soffit-${role})`);
+  }
+  move(step) {
+    const points = [];
+    for (let i = 0; i < this.length; i++) {
+      const [u, v] = this.tables.map((table) => table[table.length > this.length ? step * this.length + i : i]);
+      points.push(`${u.toFixed(5)},${(1 - v).toFixed(5)}`);
+    }
+    this.path.setAttribute("d", `M${points.join("L")}`);
+  }
+}
+
+// One figure in one view. Points are bqplot's own; what moves is drawn in a layer of its own, so that a step of the
+// slider repaints only this layer and the points whose status changes.
+class PaintedFigure {
+  constructor(figure, place, steps) {
+    this.figure = figure;
+    this.place = place;
+    this.plot = figure.querySelector("svg.svg-figure > g");
+    this.area = this.plot.querySelector(":scope > rect.plotarea_events");
+    this.groups = this.plot.querySelector(":scope > g").children;
+    this.layer = document.createElementNS("http://www.w3.org/2000/svg", "svg");
+    this.layer.setAttribute("class", "soffit-moving");
+    this.layer.setAttribute("viewBox", "0 0 1 1");
+    this.layer.setAttribute("preserveAspectRatio", "none");
+    this.moving = place.moving.map((mark) => new Moving(mark, steps));
+    this.layer.append(...this.moving.map(({ path }) => path));
+    figure.insertBefore(this.layer, figure.querySelector("svg.svg-figure"));
+    for (const { mark } of place.moving) this.groups[mark].classList.add("soffit-replaced");
+    this.nodes = place.points < 0 ? [] : [...this.groups[place.points].querySelectorAll(":scope > .object_grp")];
+    this.layout = new MutationObserver(() => this.fit());
+    this.layout.observe(this.area, { attributeFilter: ["width", "height"] });
+    this.layout.observe(this.plot, { attributeFilter: ["transform"] });
+    this.fit();
+  }
+  // A figure is ready when bqplot has drawn its points; a view that was drawn anew is another figure.
+  static ready(figure, place) {
+    const groups = figure.querySelector("svg.svg-figure > g > g")?.children ?? [];
+    if (groups.length < place.marks) return false;
+    if (place.moving.some(({ mark }) => !groups[mark].querySelector("path"))) return false;
+    if (place.points < 0) return true;
+    return groups[place.points].querySelectorAll(":scope > .object_grp > path.dot").length === place.count;
+  }
+  get current() {
+    return this.layer.isConnected && (this.nodes.length === 0 || this.nodes[0].isConnected);
+  }
+  fit() {
+    const [left, top] = /translate\(([-\d.e]+)[ ,]+([-\d.e]+)\)/.exec(this.plot.getAttribute("transform")).slice(1);
+    Object.assign(this.layer.style, {
+      left: `${left}px`,
+      top: `${top}px`,
+      width: `${this.area.getAttribute("width")}px`,
+      height: `${this.area.getAttribute("height")}px`,
+    });
+  }
+  close() {
+    this.layout.disconnect();
+    this.layer.remove();
+    for (const group of this.groups) group.classList.remove("soffit-replaced");
+  }
+}
+
+const stepOf = (model, ceiling) => {
+  const step = Math.round((ceiling - model.get("low")) / model.get("step"));
+  const onStep = Math.abs(model.get("low") + step * model.get("step") - ceiling) < 1e-9;
+  return onStep && step >= 0 && step < model.get("sentences").length ? step : null;
+};
+
+// The sentence: once for the model, whatever number of views there are.
 async function initialize({ model }) {
   const slider = await fetchModel(model, model.get("slider"));
   const finding = await fetchModel(model, model.get("finding"));
-  let targets = [];
-  async function load() {
-    const moves = model.get("moves");
-    const marks = await Promise.all(moves.map(({ mark }) => fetchModel(model, mark)));
-    targets = moves.map(({ traits }, i) => ({
-      mark: marks[i],
-      traits: traits.map((trait) => ({ ...trait, table: floats(trait.table, Float32Array) })),
-    }));
-  }
-  function play() {
-    const ceiling = slider.get("value");
-    const step = Math.round((ceiling - model.get("low")) / model.get("step"));
-    const sentences = model.get("sentences");
-    const onStep = Math.abs(model.get("low") + step * model.get("step") - ceiling) < 1e-9;
-    if (!onStep || step < 0 || step >= sentences.length) return; // the kernel answers for these
-    finding.set("text", sentences[step]);
-    for (const { mark, traits } of targets) {
-      const state = {};
-      for (const { name, rows, table } of traits) {
-        const width = table.length / sentences.length;
-        const row = table.slice(step * width, (step + 1) * width);
-        const length = width / rows;
-        state[name] =
-          rows === 1 ? row : Array.from({ length: rows }, (_, r) => row.slice(r * length, (r + 1) * length));
-      }
-      mark.set(state);
-    }
-  }
-  await load();
-  model.on("change:moves", load);
+  const play = () => {
+    const step = stepOf(model, slider.get("value"));
+    // Between the steps, and beyond them, the kernel answers.
+    if (step !== null) finding.set("text", model.get("sentences")[step]);
+  };
   slider.on("change:value", play);
   return () => slider.off("change:value", play);
 }
 
-// Points: in every view, only those whose status changes.
+// Points and moving marks, in every view.
 async function render({ model, el }) {
   el.style.display = "none";
   const slider = await fetchModel(model, model.get("slider"));
   let thresholds = new Thresholds(model);
   let root = null;
-  let painted = new Map(); // figure element -> { nodes, ceiling }
+  const painted = new Map(); // figure element -> PaintedFigure
 
-  function points(figure, { mark, count }) {
-    const group = figure.querySelector("svg.svg-figure > g > g")?.children[mark];
-    const nodes = group ? [...group.children].filter((node) => node.classList.contains("object_grp")) : [];
-    return nodes.length === count ? nodes : null;
-  }
   function dress(node, status) {
     node.classList.remove(...CLASSES);
     node.classList.add(CLASSES[status]);
     if (!CSS.supports("d", 'path("M0,0")')) node.firstChild.setAttribute("d", model.get("shapes")[status]);
   }
+  function paintFigure(element, place, ceiling) {
+    let figure = painted.get(element);
+    if (!figure?.current) {
+      figure?.close();
+      painted.delete(element);
+      if (!PaintedFigure.ready(element, place)) return;
+      figure = new PaintedFigure(element, place, model.get("sentences").length);
+      painted.set(element, figure);
+    }
+    // A ceiling between the steps moves the marks as the kernel answers, in another place.
+    const changed = figure.ceiling === undefined ? figure.nodes.keys() : thresholds.between(figure.ceiling, ceiling);
+    if (figure.nodes.length) for (const i of changed) dress(figure.nodes[i], thresholds.status(i, ceiling));
+    figure.ceiling = ceiling;
+    const step = stepOf(model, ceiling);
+    if (step !== null) for (const mark of figure.moving) mark.move(step);
+    figure.layer.classList.toggle("soffit-between", step === null);
+    for (const { mark } of place.moving) figure.groups[mark].classList.toggle("soffit-replaced", step !== null);
+  }
   function paint() {
     const ceiling = slider.get("value");
     if (root === null || ceiling === null) return;
-    for (const place of model.get("figures")) {
-      for (const figure of root.querySelectorAll(`.${place.css}`)) {
-        let known = painted.get(figure);
-        if (!known || !known.nodes[0]?.isConnected || known.nodes.length !== place.count) {
-          const nodes = points(figure, place);
-          if (!nodes) continue;
-          nodes.forEach((node, i) => dress(node, thresholds.status(i, ceiling)));
-          painted.set(figure, { nodes, ceiling });
-          continue;
-        }
-        for (const i of thresholds.between(known.ceiling, ceiling))
-          dress(known.nodes[i], thresholds.status(i, ceiling));
-        known.ceiling = ceiling;
+    for (const [element, figure] of painted)
+      if (!element.isConnected) {
+        figure.close();
+        painted.delete(element);
       }
-    }
+    for (const place of model.get("figures"))
+      for (const element of root.querySelectorAll(`.${place.css}`)) paintFigure(element, place, ceiling);
     thresholds.counts(ceiling).forEach((count, status) => {
       for (const place of root.querySelectorAll(`.soffit-count-${WORDS[status]}`)) {
         place.textContent = count.toLocaleString("en");
@@ -127,24 +182,26 @@ async function render({ model, el }) {
     });
   }
   function repaint() {
-    painted = new Map();
+    for (const figure of painted.values()) figure.close();
+    painted.clear();
     paint();
   }
 
   let frame = 0;
-  const later = () => {
+  const later = (what) => {
     cancelAnimationFrame(frame);
-    frame = requestAnimationFrame(repaint);
+    frame = requestAnimationFrame(what);
   };
-  const ours = ".object_grp, .bqplot, .soffit-key";
+  // bqplot draws a figure bit by bit, and again when it is shown again.
+  const ours = ".object_grp, .bqplot, .curve, .soffit-key";
   const drawn = (node) => node.nodeType === 1 && (node.matches(ours) || node.querySelector(ours));
   const watcher = new MutationObserver((changes) => {
-    if (changes.some((change) => [...change.addedNodes].some(drawn))) later();
+    if (changes.some((change) => [...change.addedNodes].some(drawn))) later(paint);
   });
   // The view is attached to its panel only after it is rendered.
   const attach = () => {
     root = el.closest(".soffit-panel");
-    if (root === null) return (frame = requestAnimationFrame(attach));
+    if (root === null) return later(attach);
     watcher.observe(root, { childList: true, subtree: true });
     repaint();
   };
@@ -152,13 +209,14 @@ async function render({ model, el }) {
   slider.on("change:value", paint);
   model.on("change:defined_from change:outside_below change:inside_from", () => {
     thresholds = new Thresholds(model);
-    later();
+    later(repaint);
   });
-  model.on("change:figures", later);
+  model.on("change:figures", () => later(repaint));
   return () => {
     cancelAnimationFrame(frame);
     watcher.disconnect();
     slider.off("change:value", paint);
+    for (const figure of painted.values()) figure.close();
   };
 }
 
