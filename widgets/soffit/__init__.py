@@ -13,44 +13,37 @@ from typing import Any
 __version__ = "0.1.0"
 
 # Names are imported when they are first used, so that `import soffit` stays quick.
-_HOMES: dict[str, str] = {
-    "BookAlpha": "soffit.study",
-    "CeilingForm": "soffit.settings",
-    "CeilingPanel": "soffit.panels",
-    "ErrorType": "soffit.settings",
-    "Histories": "soffit.settings",
-    "Instrument": "soffit.hedge.ticket",
-    "LegKind": "soffit.hedge.costs",
-    "LagRule": "soffit.settings",
-    "Pack": "soffit.memo",
-    "Rounding": "soffit.hedge.ticket",
-    "Settings": "soffit.settings",
-    "Study": "soffit.study",
-    "build": "soffit.present.exhibits",
-    "demo_study": "soffit.demo",
-    "open_panel": "soffit.intake",
-    "write": "soffit.memo",
+_ROOMS: dict[str, tuple[str, ...]] = {
+    "soffit.demo": ("demo_frames", "demo_study"),
+    "soffit.hedge.costs": ("LegKind",),
+    "soffit.hedge.ticket": ("Instrument", "Rounding"),
+    "soffit.intake": ("Source", "compare_vintages", "open_panel"),
+    "soffit.memo": ("Inputs", "Label", "Pack", "StudyFile", "verify", "write"),
+    "soffit.memo.notebook": ("run_report",),
+    "soffit.memo.sweep": ("run_sweep",),
+    "soffit.panels": (
+        "BookPanel",
+        "CeilingPanel",
+        "Desk",
+        "FactorSetsPanel",
+        "HedgeCostsPanel",
+        "HedgePanel",
+        "IntakePanel",
+        "JointPanel",
+        "ManyAlphasPanel",
+        "PricesPanel",
+        "RegressionPanel",
+        "SharpePanel",
+        "ShrinkagePanel",
+        "WalkForwardPanel",
+    ),
+    "soffit.present.exhibits": ("build",),
+    "soffit.settings": ("CeilingForm", "ErrorType", "Histories", "LagRule", "Settings"),
+    "soffit.study": ("BookAlpha", "Study"),
 }
+_HOMES: dict[str, str] = {name: room for room, names in _ROOMS.items() for name in names}
 
-__all__ = [
-    "BookAlpha",
-    "CeilingForm",
-    "CeilingPanel",
-    "ErrorType",
-    "Histories",
-    "Instrument",
-    "LagRule",
-    "LegKind",
-    "Pack",
-    "Rounding",
-    "Settings",
-    "Study",
-    "__version__",
-    "build",
-    "demo_study",
-    "open_panel",
-    "write",
-]
+__all__ = sorted(["__version__", *_HOMES])
 
 
 def __getattr__(name: str) -> Any:
