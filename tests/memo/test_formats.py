@@ -20,6 +20,8 @@ import pandas as pd
 import pytest
 from docx.oxml.ns import qn
 from matplotlib.image import imread
+from pptx import Presentation
+from pptx.enum.shapes import MSO_SHAPE_TYPE
 
 from soffit.errors import InputError, SettingError
 from soffit.memo import Format, Memo, Pack, write
@@ -27,10 +29,12 @@ from soffit.memo.excel import excel as write_excel
 from soffit.memo.html import html as write_html
 from soffit.memo.latex import escape as latex_escape
 from soffit.memo.latex import table_latex
+from soffit.memo.layout import NumberedTable
 from soffit.memo.markdown import escape as markdown_escape
 from soffit.memo.markdown import markdown as write_md
 from soffit.memo.markdown import table_markdown
 from soffit.memo.pdf import pdf as write_pdf
+from soffit.memo.slides import slides as write_slides
 from soffit.memo.text import plain
 from soffit.memo.word import word as write_word
 from soffit.present.spec import NumberForm, TableSpec
@@ -92,10 +96,17 @@ def shown(spec: TableSpec) -> list[list[str]]:
     return rows
 
 
+def on_page(table: NumberedTable) -> list[list[str]]:
+    """The same, turned on its side where a page has no room for the columns of a few rows."""
+    grid = [list(table.headings), *shown(table.spec)]
+    turned = len(table.headings) > 9 and len(table.spec.frame) <= 5
+    return [list(row) for row in zip(*grid, strict=True)] if turned else grid
+
+
 @pytest.fixture(scope="module")
 def memo(study_once: Study) -> Memo:
     pack = Pack(study_once, title=f"On {NASTY[0]}", author=NASTY[2], dated=NASTY[6])
-    return pack.keep(make_exhibit()).lay_out()
+    return pack.keep(make_exhibit()).keep(make_exhibit(NASTY[:3], key="few")).lay_out()
 
 
 @pytest.fixture(scope="module")
@@ -103,10 +114,27 @@ def real(study_once: Study) -> Memo:
     return Pack(study_once).keep("ceiling").keep("joint").keep("regression").lay_out()
 
 
+def test_slides_hold_figures_small_tables_and_cautions(memo: Memo, real: Memo) -> None:
+    for one in (memo, real):
+        show = Presentation(io.BytesIO(slides(one)))
+        shapes = [shape for slide in show.slides for shape in slide.shapes]
+        pictures = [shape for shape in shapes if shape.shape_type == MSO_SHAPE_TYPE.PICTURE]
+        assert [picture._element.nvPicPr.cNvPr.get("descr") for picture in pictures] == [
+            figure.alt for figure in one.figures
+        ]
+        tables = {shape.name: shape.table for shape in shapes if shape.has_table}
+        assert tables
+        for table in one.tables:
+            if table.name in tables:
+                texts = [[cell.text for cell in row.cells] for row in tables[table.name].rows]
+                assert texts == on_page(table)[: len(texts)]
+        words = "\n".join(shape.text_frame.text for shape in shapes if shape.has_text_frame)
+        assert all(text in words for text in (*one.cautions, *one.references))
+
+
 # Drawing takes most of the time, and the same memo always gives the same bytes: draw each once.
-html, word, excel, markdown, pdf = (
-    cache(writer) for writer in (write_html, write_word, write_excel, write_md, write_pdf)
-)
+html, word, excel = cache(write_html), cache(write_word), cache(write_excel)
+markdown, pdf, slides = cache(write_md), cache(write_pdf), cache(write_slides)
 
 
 # ---- every number is the string of show()
@@ -123,7 +151,7 @@ def test_word_shows_the_numbers_of_show(memo: Memo, real: Memo) -> None:
         tables = docx.Document(io.BytesIO(word(one))).tables
         for table, found in zip(one.tables, tables, strict=False):
             texts = [[cell.text for cell in row.cells] for row in found.rows]
-            assert texts == [list(table.headings), *shown(table.spec)]
+            assert texts == on_page(table)
 
 
 def test_markdown_shows_the_numbers_of_show(memo: Memo, real: Memo) -> None:
@@ -149,7 +177,7 @@ def test_pdf_is_typeset_from_the_numbers_of_show(memo: Memo, real: Memo) -> None
         sections = [part for part in _data(one)["body"] if part["kind"] == "section"]
         tables = [table for section in sections for table in section["tables"]]
         for table, found in zip(one.tables, tables, strict=True):
-            assert found["rows"] == shown(table.spec)
+            assert [found["headings"], *found["rows"]] == on_page(table)
 
 
 def test_excel_keeps_full_precision_under_formats_that_show_the_same(memo: Memo, real: Memo) -> None:
@@ -436,7 +464,7 @@ def test_two_runs_give_the_same_bytes(nasty_pack: Pack, form: Format, tmp_path: 
 
 def test_no_file_carries_the_clock(nasty_pack: Pack) -> None:
     memo = nasty_pack.lay_out()
-    for data in (word(memo), excel(memo)):
+    for data in (word(memo), excel(memo), slides(memo)):
         with zipfile.ZipFile(io.BytesIO(data)) as archive:
             assert {entry.date_time for entry in archive.infolist()} == {(1980, 1, 1, 0, 0, 0)}
             core = archive.read("docProps/core.xml").decode()

@@ -65,6 +65,21 @@ class Inputs:
                     remedy="leave it out and let the database driver find it",
                 )
 
+    @classmethod
+    def of(cls, study: Study) -> Inputs | None:
+        """The files that a study was opened from; None where its data or an option came from memory."""
+        came = study.opened_from
+        if not came:
+            return None
+        options = {
+            name: str(value) if isinstance(value, Path) else value
+            for name, value in came["options"].items()
+            if name not in ("progress", "limits")
+        }
+        if not all(name in _OPTIONS and _plain(value) for name, value in options.items()):
+            return None
+        return cls(came["returns"], came["factors"], options)
+
     @property
     def paths(self) -> tuple[str, ...]:
         """The files or addresses, the assets' first."""
@@ -147,6 +162,15 @@ def file_fingerprint(path: Path) -> str:
         return hashlib.sha256(path.read_bytes()).hexdigest()
     except OSError as error:
         raise InputError(f"The file '{path}' cannot be read ({error})") from error
+
+
+def _plain(value: Any) -> bool:
+    """Whether a value can stand in a TOML file."""
+    if isinstance(value, Mapping):
+        return all(isinstance(name, str) and _plain(item) for name, item in value.items())
+    if isinstance(value, (list, tuple)):
+        return all(_plain(item) for item in value)
+    return isinstance(value, (str, bool, int, float))
 
 
 def _place(source: str | Mapping[str, Any]) -> str:

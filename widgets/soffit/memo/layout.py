@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from datetime import date
 from enum import StrEnum
@@ -18,6 +18,7 @@ from soffit.present.wording import show
 
 __all__ = [
     "Cell",
+    "Grid",
     "Label",
     "Memo",
     "NumberedFigure",
@@ -26,7 +27,11 @@ __all__ = [
     "Remark",
     "Section",
     "SimpleTable",
+    "column_shares",
 ]
+
+
+_FEW = 5  # rows up to which a wide table is turned on its side
 
 
 class Label(StrEnum):
@@ -60,6 +65,15 @@ def _cell(value: Any, form: NumberForm) -> Cell:
     if isinstance(value, NotApplicable) or (not isinstance(value, str) and pd.isna(value)):
         value = None
     return Cell(plain(show(value, form)), value, form)
+
+
+@dataclass(frozen=True)
+class Grid:
+    """Headings and texts of a table on a page, and which columns are set to the right."""
+
+    headings: tuple[str, ...]
+    rows: tuple[tuple[str, ...], ...]
+    is_number: tuple[bool, ...]
 
 
 @dataclass(frozen=True, eq=False)
@@ -152,6 +166,25 @@ class NumberedTable:
         for row, name in enumerate(self.spec.frame.index[:most]):
             cells = tuple(_cell(values[row], self.spec.form_at(row, column)) for column, values in columns)
             yield plain(name), cells
+
+    def grid(self, most: int, columns: int) -> Grid:
+        """The table as a page sets it: turned on its side where it has few rows and more columns than fit.
+
+        Parameters
+        ----------
+        most : int
+            Rows at most.
+        columns : int
+            Columns beyond which a page of usual width is too narrow.
+        """
+        rows = [(name, *(cell.text for cell in cells)) for name, cells in self.rows(most)]
+        if len(self.headings) <= columns or len(rows) > _FEW:
+            return Grid(self.headings, tuple(rows), self.is_number)
+        return Grid(
+            (self.headings[0], *(row[0] for row in rows)),
+            tuple(zip(self.headings[1:], *(row[1:] for row in rows), strict=True)),
+            (False, *(True for _ in rows)),
+        )
 
     def cut(self, most: int) -> str:
         """Say how many rows a page leaves out; empty if none."""
@@ -267,6 +300,33 @@ class Memo:
         parts = [str(label) for label in self.labels] + ([self.fees] if self.fees else [])
         line = " · ".join(parts)
         return line[:1].upper() + line[1:]
+
+
+def column_shares(rows: Sequence[Sequence[str]], letters: int) -> list[float]:
+    """Share of a line that each column of a table gets.
+
+    Every column first gets room for its longest word, so that words keep whole; what is left goes to the columns
+    whose texts are longer.
+
+    Parameters
+    ----------
+    rows : sequence of sequence of str
+        Headings and rows.
+    letters : int
+        About how many letters a line holds.
+    """
+    columns = list(zip(*rows, strict=True))
+    words = [
+        max(4, *(len(word) for text in column for word in text.split() or [""])) + 2.0 for column in columns
+    ]
+    words = [min(size, letters / 2) for size in words]
+    extra = [
+        max(0.0, max(len(text) for text in column) + 2.0 - size)
+        for column, size in zip(columns, words, strict=True)
+    ]
+    left = max(0.0, letters - sum(words))
+    part = min(1.0, left / sum(extra)) if sum(extra) else 0.0
+    return [size + part * more for size, more in zip(words, extra, strict=True)]
 
 
 def _file_part(key: str) -> str:

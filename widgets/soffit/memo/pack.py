@@ -82,7 +82,7 @@ class Pack:
     labels : iterable of Label, optional
         Labels of the whole memo.
     inputs : Inputs, optional
-        The files the study was opened from; an audit opens them again.
+        The files the study was opened from, which an audit opens again; those the study remembers if left out.
 
     Examples
     --------
@@ -103,7 +103,7 @@ class Pack:
         self.study = study
         self.title, self.author, self.dated = title, author, dated
         self.labels = _labels(labels)
-        self.inputs = inputs
+        self.inputs = inputs if inputs is not None else Inputs.of(study)
         self._parts: list[KeptPart | FailedPart | str] = [KeptPart(_kept(item, study)) for item in study.kept]
         self._captions: dict[str, str] = {}
 

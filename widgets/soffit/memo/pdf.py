@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import json
 import tempfile
-from collections.abc import Callable, Sequence
 from importlib.resources import files
 from pathlib import Path
 from typing import Any
@@ -12,7 +11,15 @@ from typing import Any
 import matplotlib as mpl
 import typst
 
-from soffit.memo.layout import Memo, NumberedFigure, NumberedTable, Remark, Section, SimpleTable
+from soffit.memo.layout import (
+    Memo,
+    NumberedFigure,
+    NumberedTable,
+    Remark,
+    Section,
+    SimpleTable,
+    column_shares,
+)
 from soffit.memo.text import Runs
 from soffit.present.draw_mpl import svg_bytes
 from soffit.present.theme import MEMO_WIDTHS
@@ -21,6 +28,7 @@ __all__ = ["MOST_ROWS", "pdf"]
 
 # A page holds about fifty rows; what is left out is said, and stands in the workbook.
 MOST_ROWS = 60
+_WIDE = 9  # columns beyond which a table is set across the page
 
 
 def pdf(memo: Memo) -> bytes:
@@ -102,34 +110,27 @@ def _figure(figure: NumberedFigure) -> dict[str, Any]:
 
 def _table(table: NumberedTable) -> dict[str, Any]:
     note = " ".join(part for part in (table.footnote, table.cut(MOST_ROWS)) if part)
-    rows = [[name, *(cell.text for cell in cells)] for name, cells in table.rows(MOST_ROWS)]
+    grid = table.grid(MOST_ROWS, _WIDE)
     return {
         "name": table.name,
         "anchor": table.anchor,
         "caption": _runs(table.caption),
-        "headings": list(table.headings),
-        "numbers": list(table.is_number),
-        "rows": rows,
-        "columns": _shares(
-            [table.headings, *rows], lambda text: max(len(word) for word in text.split() or [""])
-        ),
+        "headings": list(grid.headings),
+        "numbers": list(grid.is_number),
+        "rows": [list(row) for row in grid.rows],
+        "wide": len(grid.headings) > _WIDE,
+        "columns": column_shares([grid.headings, *grid.rows], 170),
         "footnote": note,
     }
 
 
 def _simple(table: SimpleTable) -> dict[str, Any]:
-    shares = [share**0.6 for share in _shares([table.headings, *table.rows], len)]
     return {
         "title": table.title,
         "headings": list(table.headings),
         "rows": [list(row) for row in table.rows],
-        "columns": [round(share, 3) for share in shares],
+        "columns": column_shares([table.headings, *table.rows], 120),
     }
-
-
-def _shares(rows: Sequence[Sequence[str]], size: Callable[[str], int]) -> list[int]:
-    """Share of the page that each column gets, by its longest text."""
-    return [max(4, *(size(text) for text in column)) for column in zip(*rows, strict=True)]
 
 
 def _runs(words: Runs) -> list[Any]:

@@ -18,8 +18,17 @@ from docx.shared import Inches, Mm, Pt, RGBColor
 
 from soffit.memo.archive import without_clock
 from soffit.memo.images import DPI
-from soffit.memo.layout import Memo, NumberedFigure, NumberedTable, Remark, Section, SimpleTable
-from soffit.memo.text import Link, Runs
+from soffit.memo.layout import (
+    Grid,
+    Memo,
+    NumberedFigure,
+    NumberedTable,
+    Remark,
+    Section,
+    SimpleTable,
+    column_shares,
+)
+from soffit.memo.text import Link, Runs, plain
 from soffit.present.draw_mpl import png_bytes
 from soffit.present.theme import MEMO_WIDTHS
 
@@ -174,8 +183,9 @@ class _Writer:
         for figure in section.figures:
             self._figure(figure)
         for table in section.tables:
-            with self._landscape(len(table.headings) > _WIDE):
-                self._table(table)
+            grid = table.grid(MOST_ROWS, _WIDE)
+            with self._landscape(len(grid.headings) > _WIDE):
+                self._table(table, grid)
 
     def _figure(self, figure: NumberedFigure) -> None:
         self._caption("Figure", figure.number, figure.anchor, figure.caption)
@@ -187,11 +197,11 @@ class _Writer:
         self.document.paragraphs[-1].paragraph_format.keep_with_next = True
         self._small(self.document.add_paragraph(), figure.footnote)
 
-    def _table(self, table: NumberedTable) -> None:
+    def _table(self, table: NumberedTable, grid: Grid) -> None:
         self._caption("Table", table.number, table.anchor, table.caption)
-        rows = [(name, *(cell.text for cell in cells)) for name, cells in table.rows(MOST_ROWS)]
-        size = 6.5 if len(table.headings) > _WIDE else 7.5
-        self._grid(table.headings, rows, table.is_number, size, f"{table.name}. {table.spec.title}")
+        size = 6.5 if len(grid.headings) > _WIDE else 7.5
+        about = f"{table.name}. {plain(table.spec.title)}"
+        self._grid(grid.headings, list(grid.rows), grid.is_number, size, about)
         note = " ".join(part for part in (table.footnote, table.cut(MOST_ROWS)) if part)
         self._small(self.document.add_paragraph(), note)
 
@@ -274,7 +284,9 @@ class _Writer:
     def _grid(
         self, headings: tuple[str, ...], rows: list[Any], numbers: tuple[bool, ...], size: float, about: str
     ) -> None:
-        widths = _widths(headings, rows, self._room)
+        # Letters of this font are about six tenths of its size wide.
+        shares = column_shares([headings, *rows], int(self._room / Pt(0.6 * size)))
+        widths = [int(self._room * share / sum(shares)) for share in shares]
         table = self.document.add_table(rows=1 + len(rows), cols=len(headings))
         table.alignment = WD_TABLE_ALIGNMENT.LEFT
         table.autofit = False
@@ -302,16 +314,6 @@ def _fill(cell: Any, text: str, size: float, width: int, *, right: bool, bold: b
     if bold:
         about.get_or_add_b()
     run.text = text
-
-
-def _widths(headings: tuple[str, ...], rows: list[Any], room: int) -> list[int]:
-    """Share the room by the longest text in each column, so that words keep whole."""
-    wanted = []
-    for column, heading in enumerate(headings):
-        word = max((len(part) for part in heading.split()), default=1)
-        longest = max((len(row[column]) for row in rows), default=0)
-        wanted.append(min(max(word, longest, 4), 60) + 2)
-    return [int(room * share / sum(wanted)) for share in wanted]
 
 
 def _describe(table: Any, about: str) -> None:

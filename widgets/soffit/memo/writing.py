@@ -22,6 +22,7 @@ class Format(StrEnum):
     WORD = "docx"
     PDF = "pdf"
     EXCEL = "xlsx"
+    SLIDES = "pptx"
     MARKDOWN = "md"
     LATEX = "tex"
     PNG = "png"
@@ -57,6 +58,7 @@ _WRITERS: dict[Format, Callable[[Memo], Mapping[str, bytes]]] = {
     Format.WORD: _one("memo.docx", "soffit.memo.word", "word"),
     Format.PDF: _one("memo.pdf", "soffit.memo.pdf", "pdf"),
     Format.EXCEL: _one("memo.xlsx", "soffit.memo.excel", "excel"),
+    Format.SLIDES: _one("memo.pptx", "soffit.memo.slides", "slides"),
     Format.MARKDOWN: _markdown,
     Format.LATEX: _many("soffit.memo.latex", "table_files"),
     Format.PNG: _many("soffit.memo.images", "png_files"),

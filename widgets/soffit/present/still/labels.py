@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 from matplotlib.lines import Line2D
 
-from soffit.present.spec import Band, Line, Orientation, Points, Rule, Segments
+from soffit.present.spec import Band, Bars, Line, Orientation, Points, Rule, Segments
 from soffit.present.still.places import Box, Places, around, spread
 from soffit.present.still.scales import (
     Floats,
@@ -215,6 +215,12 @@ class Labels:
                 span = (mark.low + (mark.high - mark.low) * shares).ravel()
                 at = np.tile(at, 9)
                 spots, half, weight = pixel(np.column_stack([at, span] if up else [span, at])), 1.5, 0.1
+            elif isinstance(mark, Bars):
+                level = mark.orientation is Orientation.HORIZONTAL
+                share = np.linspace(0, 1, 9)[:, None] * np.asarray(mark.length, dtype=float)
+                at = np.tile(numbers(mark.at), 9)
+                spots = pixel(np.column_stack([share.ravel(), at] if level else [at, share.ravel()]))
+                half, weight = self.sheet.size * 0.8, 0.5
             elif isinstance(mark, Rule):
                 spots, half, weight = along_path(self._rule_ends(mark)), 0.8, 0.6
             else:
