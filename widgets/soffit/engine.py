@@ -39,15 +39,17 @@ def run_here(steps: Steps[R], *, quiet: bool = False) -> R:
     from tqdm.auto import tqdm
 
     with tqdm(disable=quiet, leave=False, delay=0.5) as bar:
+        said = ""
         while True:
             try:
                 progress = next(steps)
             except StopIteration as end:
                 result: R = end.value
                 return result
-            if progress.message != bar.desc:
-                bar.set_description(progress.message, refresh=False)
-            bar.total = progress.total or None
+            if progress.message != said:
+                said = progress.message
+                bar.set_description(said, refresh=False)
+                bar.reset(progress.total or None)
             bar.update(progress.done - bar.n)
 
 

@@ -16,6 +16,7 @@ from soffit.panels.ceiling_panel import CeilingPanel
 from soffit.panels.panel_base import Panel
 from soffit.panels.table_view import TableView
 from soffit.panels.work import Unfinished, Work, try_now
+from soffit.present.bqplot_axes import MOST_NAMES
 from soffit.present.exhibits import EXHIBITS, build
 from soffit.present.freeing import free
 from soffit.present.spec import Exhibit, FigureSpec, Points
@@ -38,6 +39,10 @@ __all__ = [
     "WalkForwardPanel",
     "panel_of",
 ]
+
+
+# Pixels of a figure that lists names: so much for each, and for the axis below.
+_ROW, _AXIS, _LEAST = 22, 90, 400
 
 
 @dataclass(frozen=True, eq=False)
@@ -99,12 +104,14 @@ class ExhibitPanel(Panel):
         """Draw an exhibit, or wait for it while the panel answers."""
         if isinstance(computed, Unfinished):
             self._set_stale(True)
+            self._show_parts(self._answer is not None)
             self._work.begin(computed.steps, self.show)
             return
         self._work.drop()
         if self.follows_asset and computed.selected != self.session.selected:
             computed = self._answered(self.session.study)
         self._set_stale(False)
+        self._show_parts(True)
         self._draw(computed)
 
     def _answered(self, study: Study) -> _Answer:
@@ -182,10 +189,29 @@ class ExhibitPanel(Panel):
         if at in keys and self._views.index != keys.index(at):
             self._views.index = keys.index(at)
 
+    def _show_view(self) -> None:
+        super()._show_view()
+        if self._specs:
+            spec = self._specs[self._views.index or 0]
+            height = f"{_height(spec)}px"
+            layout = self._figures[spec.key].widget.layout
+            if layout.height != height:
+                layout.height = height
+
+    def key_html(self, spec: FigureSpec) -> str:
+        """Legend of what is not labelled in the figure itself; none where all marks are of one kind."""
+        html = super().key_html(spec)
+        return "" if html.count("<span>") == 1 else html
+
     def _set_stale(self, stale: bool) -> None:
         self._stale = stale
         (self.widget.add_class if stale else self.widget.remove_class)("soffit-stale")
         self._keep.disabled = stale
+
+    def _show_parts(self, there: bool) -> None:
+        """Show or hide what is empty before the first result is there."""
+        for part in (self._finding, self._keep, self._tables.widget, self._notes):
+            part.layout.display = None if there else "none"
 
     def _compute_after_all(self) -> None:
         self.show(self.compute(self.session.study))
@@ -226,6 +252,11 @@ class ExhibitPanel(Panel):
         """Stop what runs, leave the session and free everything in the browser."""
         self._free_parts()
         super().close()
+
+
+def _height(spec: FigureSpec) -> int:
+    """Height of a figure, in pixels: every name that its vertical axis lists needs a line."""
+    return max(_LEAST, _AXIS + _ROW * min(len(spec.y.categories), MOST_NAMES))
 
 
 def _assets(study: Study) -> tuple[str, ...]:

@@ -23,9 +23,12 @@ from soffit.present.spec import (
 )
 from soffit.present.wording import show
 
-__all__ = ["limits", "positions", "tick_key", "ticks"]
+__all__ = ["MOST_NAMES", "limits", "positions", "tick_key", "ticks"]
 
 Floats = npt.NDArray[np.float64]
+
+MOST_NAMES = 40
+"""Categories up to which each has its name on the axis."""
 
 _STEPS = (1.0, 2.0, 5.0, 10.0)
 
@@ -98,9 +101,10 @@ def ticks(axis: Axis, low: float, high: float, most: int) -> tuple[Floats, tuple
     """Positions and texts of at most about `most` ticks, no two texts alike.
 
     Texts come from the one place where numbers become words; decimals that are zero in all of them are left off.
+    A category axis names every category up to :data:`MOST_NAMES`, for which the figure must be tall enough.
     """
     if axis.scale is AxisScale.CATEGORY:
-        stride = max(1, -(-len(axis.categories) // most))
+        stride = max(1, -(-len(axis.categories) // MOST_NAMES))
         at = np.arange(0, len(axis.categories), stride)
         return at.astype(float), tuple(axis.categories[i] for i in at)
     # A tick at zero is a position, not a p-value below what is worth printing.

@@ -227,13 +227,15 @@ def _(mark: Segments, frame: _Frame) -> list[_Part]:
     parts = []
     for role, chosen in _groups(_roles(mark.roles, len(at))):
         # One path with gaps: a mark for each interval would be slow.
+        chosen = chosen[np.isfinite(low[chosen]) & np.isfinite(high[chosen])]
         gap = np.full(len(chosen), np.nan)
         ends = np.column_stack([low[chosen], high[chosen], gap]).ravel()
         places = np.repeat(at[chosen], 3)
         x, y = (places, ends) if upright else (ends, np.where(np.isnan(ends), np.nan, places))
+        # No gap after the last interval: bqplot places a hidden text at the last point.
         traits = {
-            "x": _out(np.where(np.isnan(x), places, x), frame.spec.x),
-            "y": y,
+            "x": _out(np.where(np.isnan(x), places, x)[:-1], frame.spec.x),
+            "y": y[:-1],
             **_line_traits(role),
             "stroke_width": 1.4,
         }
@@ -244,6 +246,10 @@ def _(mark: Segments, frame: _Frame) -> list[_Part]:
 @_parts.register
 def _(mark: Line, frame: _Frame) -> list[_Part]:
     x, y = positions(mark.x, frame.spec.x), positions(mark.y, frame.spec.y)
+    if mark.key not in frame.moving:
+        there = np.flatnonzero(np.isfinite(x) & np.isfinite(y))
+        upto = there[-1] + 1 if len(there) else 0
+        x, y = x[:upto], y[:upto]
     traits = {"x": _out(x, frame.spec.x), "y": y, **_line_traits(mark.role, dashed=mark.dashed)}
     parts = [_Part(bqplot.Lines, traits)]
     if mark.key in frame.moving:
@@ -266,7 +272,9 @@ def _(mark: Line, frame: _Frame) -> list[_Part]:
 
 def _hover_points(mark: Line, x: Floats, y: Floats, frame: _Frame) -> _Part:
     name = f"{mark.label}: " if mark.label else ""
-    where = mark.x if frame.spec.x.scale is AxisScale.DATE else x
+    there = np.isfinite(x) & np.isfinite(y)
+    where = (np.asarray(mark.x)[: len(x)] if frame.spec.x.scale is AxisScale.DATE else x)[there]
+    x, y = x[there], y[there]
     names = [
         f"{name}{show(at, frame.spec.x.form)}, {show(float(value), frame.spec.y.form)}"
         for at, value in zip(where, y, strict=True)
