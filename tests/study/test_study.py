@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from pathlib import Path
+
 import numpy as np
 import pandas as pd
 import pytest
@@ -160,10 +162,24 @@ def test_more_assets_than_periods_still_gives_per_asset_results(french: pd.DataF
     assert verdict.table["status"].isin(["inside", "straddles", "outside", "undefined"]).all()
 
 
-def test_settings_from_a_file(french: pd.DataFrame, tmp_path: object) -> None:
-    from pathlib import Path
-
-    file = Settings(ceiling=0.7).save(Path(str(tmp_path)) / "study.toml")
+def test_settings_from_a_file(french: pd.DataFrame, tmp_path: Path) -> None:
+    file = Settings(ceiling=0.7).save(tmp_path / "study.toml")
     study = Study.open(french[INDUSTRIES], french[["MktRF"]], excess=True, settings=file)
     assert study.settings.ceiling == 0.7
     assert "ceiling 0.7 a year" in repr(study)
+
+
+def test_a_study_remembers_its_files_so_that_a_pack_can_be_audited(tmp_path: Path) -> None:
+    from soffit.demo import demo_frames
+    from soffit.memo import Pack, verify, write
+
+    returns, factors = demo_frames()
+    paths = tmp_path / "returns.csv", tmp_path / "factors.csv"
+    returns.to_csv(paths[0])
+    factors.to_csv(paths[1])
+    study = Study.open(paths[0], paths[1], risk_free="Cash", progress=False).changed(ceiling=0.9)
+    assert study.opened_from["options"] == {"risk_free": "Cash", "progress": False}
+    pack = Pack(study).keep("joint")
+    write(pack, tmp_path / "memo", ["md"])
+    assert verify(tmp_path / "memo").ok
+    assert Pack(Study.open(returns, factors, risk_free="Cash", progress=False)).inputs is None

@@ -37,9 +37,10 @@ def vintage_finding(effect: VintageEffect) -> Finding:
     if not len(comparison.changes):
         return Finding("The two vintages agree in every value that both have; the alphas are the same.")
     series = comparison.changes["series"].nunique()
-    worst = table["change"].abs().idxmax()
+    place = int(table["change"].abs().to_numpy().argmax())
+    worst, change = table.index[place], float(table["change"].iloc[place])
     return Finding(
         f"{plural(len(comparison.changes), 'value')} of {plural(series, 'factor')} changed between the vintages. "
-        f"The largest change of an alpha is {show(float(table.loc[worst, 'change']), NumberForm.PERCENT)} a year, "
+        f"The largest change of an alpha is {show(change, NumberForm.PERCENT)} a year, "
         f"for {worst}."
     )
