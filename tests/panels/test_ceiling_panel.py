@@ -2,17 +2,18 @@
 
 from __future__ import annotations
 
+from html import escape
 from typing import Any
 
 import numpy as np
 import pytest
 from ipywidgets.widgets.widget import _instances
 
-from soffit.panels import CeilingPanel
+from soffit.panels import CeilingPanel, still
 from soffit.panels.painter import ASSETS, MOVING, Score
 from soffit.panels.session import Session
 from soffit.present.exhibits.ceiling import CEILING_STEPS, ceiling_figures
-from soffit.present.spec import Band, Rule
+from soffit.present.spec import Band, FigureSpec, Rule
 from soffit.present.wording.ceiling import ceiling_finding
 from soffit.settings import CeilingForm
 from soffit.study import Study
@@ -230,6 +231,24 @@ def test_the_still_picture_carries_text_alternative_and_finding(panel: CeilingPa
     assert 'alt="Alphas of 12 assets against' in html
     assert "Jointly" in html
     assert "script" not in html
+
+
+def test_the_still_picture_is_of_the_ceiling_in_force(
+    panel: CeilingPanel, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    drawn: list[FigureSpec] = []
+    monkeypatch.setattr(still, "png_bytes", lambda spec: drawn.append(spec) or b"")
+    slider(panel).set_state({"value": 2.4, "dragging": False})
+    for index, built in enumerate(ceiling_figures(panel.session.study)):
+        panel._views.index = index
+        html = panel._still()
+        spec = drawn[-1]
+        assert f'alt="{escape(built.alt)}"' in html
+        assert panel._finding.alts[panel.css(spec.key)] == built.alt
+        assert spec.key == built.key
+        for one, other in zip(spec.marks, built.marks, strict=True):
+            assert getattr(one, "roles", None) == getattr(other, "roles", None)
+            assert getattr(one, "label", None) == getattr(other, "label", None)
 
 
 def test_no_joint_test_for_more_assets_than_months() -> None:

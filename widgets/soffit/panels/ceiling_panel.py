@@ -26,6 +26,9 @@ __all__ = ["CeilingPanel"]
 Floats = npt.NDArray[np.float64]
 
 
+# In the order in which the exhibit has them.
+_FIGURES = (ceiling_exhibit.alpha_sigma_figure, ceiling_exhibit.alpha_r2_figure, ceiling_exhibit.p_figure)
+
 _MEANING = {
     "inside": "the whole interval of the alpha fits under the ceiling",
     "straddles": "part of the interval of the alpha fits under the ceiling",
@@ -137,6 +140,15 @@ class CeilingPanel(Panel):
         )
         self._read()
         self._redraw_still()
+
+    def _in_view(self) -> tuple[FigureSpec, ...]:
+        # What is on screen was moved; words and labels for a reader are made again for this ceiling.
+        study = self.session.study
+        if self._shown is None or self._shown.study is not study or not self._specs:
+            return super()._in_view()
+        figure = _FIGURES[self._views.index or 0](study, study.ceiling())
+        self._finding.alts = {**self._finding.alts, self.css(figure.key): figure.alt}
+        return (figure,)
 
     def key_html(self, spec: FigureSpec) -> str:
         """Legend of the statuses, with a count that the painter keeps."""

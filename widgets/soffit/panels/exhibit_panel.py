@@ -16,9 +16,9 @@ from soffit.panels.ceiling_panel import CeilingPanel
 from soffit.panels.panel_base import Panel
 from soffit.panels.table_view import TableView
 from soffit.panels.work import Unfinished, Work, try_now
-from soffit.present.bqplot_axes import MOST_NAMES
 from soffit.present.exhibits import EXHIBITS, build
 from soffit.present.freeing import free
+from soffit.present.live.axes import MOST_NAMES
 from soffit.present.spec import Exhibit, FigureSpec, Points
 from soffit.study import Study
 

@@ -242,8 +242,11 @@ class Panel:
             self._stills = [handle]
 
     def _still(self) -> str:
-        shown = self._specs[self._views.index or 0 : (self._views.index or 0) + 1]
-        return still_html(shown, self._finding.text)
+        return still_html(self._in_view(), self._finding.text)
+
+    def _in_view(self) -> tuple[FigureSpec, ...]:
+        """The figure in view, as it is described in full; none where the panel has none."""
+        return self._specs[self._views.index or 0 : (self._views.index or 0) + 1]
 
     def _redraw_still(self) -> None:
         """Draw the still picture again after a rest, so that a saved notebook is up to date."""

@@ -25,12 +25,13 @@ STATUS_ROLES = {
 _PAGE = {
     "ink": ("var(--jp-ui-font-color0, #1F1F1F)", "var(--jp-ui-font-color0, #F0F0F0)"),
     "paper": ("var(--jp-layout-color0, #FFFFFF)", "var(--jp-layout-color0, #111111)"),
+    "soft": ("var(--jp-ui-font-color2, #5C5C5C)", "var(--jp-ui-font-color1, #C8C8C8)"),
     "grid": ("#E6E6E6", "#3A3A3A"),
 }
 
 
 def marker_path(marker: Marker, area: float) -> str:
-    """SVG path of a marker of some area, in square pixels, centred on the origin."""
+    """SVG path of a marker of some area, in square pixels, centred on the origin; in the shapes that bqplot draws."""
     if marker is Marker.CIRCLE:
         r = math.sqrt(area / math.pi)
         return f"M{r:.2f},0A{r:.2f},{r:.2f},0,1,1,{-r:.2f},0A{r:.2f},{r:.2f},0,1,1,{r:.2f},0Z"
@@ -40,8 +41,9 @@ def marker_path(marker: Marker, area: float) -> str:
         return f"M0,{-2 * h:.2f}L{w:.2f},{h:.2f}L{-w:.2f},{h:.2f}Z"
     half = math.sqrt(area) / 2
     if marker is Marker.DIAMOND:
-        d = half * 1.5
-        return f"M0,{-d:.2f}L{d:.2f},0L0,{d:.2f}L{-d:.2f},0Z"
+        h = math.sqrt(area * math.sqrt(3) / 2)
+        w = h / math.sqrt(3)
+        return f"M0,{-h:.2f}L{w:.2f},0L0,{h:.2f}L{-w:.2f},0Z"
     if marker is Marker.SQUARE:
         return f"M{-half:.2f},{-half:.2f}H{half:.2f}V{half:.2f}H{-half:.2f}Z"
     return f"M{-half:.2f},{-half:.2f}L{half:.2f},{half:.2f}M{-half:.2f},{half:.2f}L{half:.2f},{-half:.2f}"

@@ -1,4 +1,5 @@
 // The finding: one or two sentences that can be copied, announced once they have settled.
+// It also gives the panel's figures their text alternatives.
 
 function render({ model, el }) {
   el.classList.add("soffit-finding");
@@ -36,9 +37,35 @@ function render({ model, el }) {
     setTimeout(() => (copy.textContent = "Copy"), 1500);
   });
 
+  let root = null;
+  let frame = 0;
+  const describe = () => {
+    for (const [css, alt] of Object.entries(model.get("alts")))
+      for (const figure of root?.querySelectorAll(`.${css} > svg.svg-figure`) ?? []) {
+        figure.setAttribute("role", "img");
+        figure.setAttribute("aria-label", alt);
+      }
+  };
+  const watcher = new MutationObserver((changes) => {
+    if (changes.some(({ addedNodes }) => [...addedNodes].some((node) => node.classList?.contains("bqplot")))) describe();
+  });
+  // The view is attached to its panel only after it is rendered.
+  const attach = () => {
+    root = el.closest(".soffit-panel");
+    if (root === null) return (frame = requestAnimationFrame(attach));
+    watcher.observe(root, { childList: true, subtree: true });
+    describe();
+  };
+  attach();
+  model.on("change:alts", describe);
+
   model.on("change:text", show);
   text.textContent = spoken.textContent = model.get("text");
-  return () => clearTimeout(wait);
+  return () => {
+    clearTimeout(wait);
+    cancelAnimationFrame(frame);
+    watcher.disconnect();
+  };
 }
 
 export default { render };

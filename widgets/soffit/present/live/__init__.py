@@ -1,0 +1,1 @@
+"""Parts of the bqplot drawing; :mod:`soffit.present.draw_bqplot` is the way in."""
