@@ -27,7 +27,12 @@ PANELS = {
 }
 
 
+_SETTLED = """() => document.querySelector('.soffit-panel svg.svg-figure')
+    && !document.querySelector('.soffit-panel').innerText.includes('Computing')"""
+
+
 def _shot(sheet: Sheet, path: Path) -> None:
+    sheet.page.wait_for_function(_SETTLED, timeout=120_000)
     sheet.rest()
     panel = sheet.find(".soffit-panel").first
     panel.scroll_into_view_if_needed()
@@ -38,7 +43,7 @@ def _shot(sheet: Sheet, path: Path) -> None:
 def main(folder: Path, wanted: list[str]) -> None:
     """Save one picture a panel."""
     folder.mkdir(parents=True, exist_ok=True)
-    with Lab(width=1280, height=1600) as lab:
+    with Lab(width=1280, height=2200) as lab:
         for key in wanted or PANELS:
             sheet = lab.open(
                 notebook(f"import soffit as sf\nstudy = sf.demo_study()\nsf.{PANELS[key]}(study)")

@@ -16,6 +16,7 @@ from soffit.estimate.statistic import Distribution, Family, Interval, NotApplica
         (Distribution(Family.STUDENT_T, (9.0,)), "t(9)", stats.t.sf(1.7, 9)),
         (Distribution(Family.F, (4.0, 12.0)), "F(4, 12)", stats.f.sf(1.7, 4, 12)),
         (Distribution(Family.CHI2, (3.0,)), "chi-squared(3)", stats.chi2.sf(1.7, 3)),
+        (Distribution(Family.CHI2, (12.3878,)), "chi-squared(12.4)", stats.chi2.sf(1.7, 12.3878)),
     ],
 )
 def test_tails_and_labels(law: Distribution, label: str, expected: float) -> None:

@@ -67,7 +67,8 @@ class Distribution:
         """How a table prints it: ``F(12, 806)``, ``t(817)``, ``normal``."""
         if not self.df:
             return str(self.family)
-        return f"{self.family}({', '.join(f'{value:g}' for value in self.df)})"
+        shown = (f"{value:.0f}" if float(value).is_integer() else f"{value:.1f}" for value in self.df)
+        return f"{self.family}({', '.join(shown)})"
 
 
 @dataclass(frozen=True)
