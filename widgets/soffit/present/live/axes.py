@@ -58,8 +58,9 @@ def _reach(marks: tuple[Mark, ...], axis: Axis, *, horizontal: bool) -> Floats:
             parts += [mark.length, [0.0]] if along else [mark.at]
         elif isinstance(mark, Rule) and (mark.orientation is Orientation.VERTICAL) is horizontal:
             parts.append([mark.at])
-    flat = np.concatenate([positions(part, axis).ravel() for part in parts]) if parts else np.empty(0)
-    return flat[np.isfinite(flat)]
+    flat: Floats = np.concatenate([positions(part, axis).ravel() for part in parts]) if parts else np.empty(0)
+    finite: Floats = flat[np.isfinite(flat)]
+    return finite
 
 
 def limits(axis: Axis, marks: tuple[Mark, ...], *, horizontal: bool) -> tuple[float, float]:
@@ -127,7 +128,8 @@ def _round_values(low: float, high: float, bins: int) -> Floats:
     power = 10.0 ** np.floor(np.log10(rough))
     step = next(factor * power for factor in _STEPS if factor * power >= rough * (1 - 1e-9))
     first, last = np.ceil(low / step - 1e-9), np.floor(high / step + 1e-9)
-    return np.round(np.arange(first, last + 1) * step, 12) + 0.0  # no negative zero
+    found: Floats = np.round(np.arange(first, last + 1) * step, 12) + 0.0  # no negative zero
+    return found
 
 
 def _decades(low: float, high: float) -> Floats:

@@ -95,7 +95,7 @@ def _text(
     traits = {
         "x": shown_at([x], frame.spec.x),
         "y": np.array([y]),
-        "text": np.array([text], dtype=object),
+        "text": np.array([text], dtype=str),
         "x_offset": round(left),
         "y_offset": round(middle),
         "align": align,
@@ -143,7 +143,7 @@ def _(mark: Points, frame: Frame) -> list[Part]:
         traits = {
             "x": shown_at(x[chosen], frame.spec.x),
             "y": y[chosen],
-            "names": np.array([shown[i] for i in chosen], dtype=object),
+            "names": np.array([shown[i] for i in chosen], dtype=str),
             "names_unique": False,
             "display_names": False,
             "marker": drawn.marker.value,
@@ -251,7 +251,7 @@ def _hover_points(mark: Line, x: Floats, y: Floats, frame: Frame) -> Part:
     traits = {
         "x": shown_at(x, frame.spec.x),
         "y": y,
-        "names": np.array(names, dtype=object),
+        "names": np.array(names, dtype=str),
         "names_unique": False,
         "display_names": False,
         "default_size": 90,
