@@ -134,6 +134,7 @@ class Session(HasTraits):
 
     def _settle(self) -> bool:
         if self.settings == self._study.settings:
+            self.problem = ""
             return True
         study = self._opened.with_settings(self.settings)
         try:
