@@ -60,6 +60,7 @@ class DrawnFigure:
         self.widget = bqplot.Figure(
             axes=self._axes,
             animation_duration=0,
+            display_toolbar=False,
             padding_x=0.0,
             padding_y=0.0,
             background_style={"fill": "none"},
@@ -188,9 +189,9 @@ class DrawnFigure:
         widest = max((len(text) for text in self._axes[1].tick_labels.values()), default=4)
         left = int(38 + 6.6 * min(max(widest, 3), 26))
         _assign(self._axes[1], "label_offset", f"{left - 16}px")
-        _assign(self._axes[0], "label_offset", "34px")
+        _assign(self._axes[0], "label_offset", "38px")
         top, right = frame.margins
-        _assign(self.widget, "fig_margin", {"top": top, "bottom": 48, "left": left, "right": right})
+        _assign(self.widget, "fig_margin", {"top": top, "bottom": 52, "left": left, "right": right})
 
 
 def _scale(axis: Axis) -> bqplot.Scale:
