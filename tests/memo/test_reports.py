@@ -6,6 +6,7 @@ import json
 import re
 from collections.abc import Callable
 from datetime import date
+from html import escape
 from pathlib import Path
 from typing import Any
 
@@ -26,6 +27,7 @@ from soffit.memo.parameters import (
 )
 from soffit.memo.study_file import StudyFile
 from soffit.memo.sweep import run_sweep
+from soffit.present.cautions import CAUTIONS
 from soffit.settings import CeilingForm, ErrorType, Settings
 
 from .conftest import invented
@@ -160,6 +162,8 @@ def test_a_report_runs_in_a_kernel_and_shows_no_code(desk: Path) -> None:
     assert str(desk) not in text
     assert not re.search(r"20\d\d-\d\d-\d\dT\d\d:\d\d", text)
     assert "Desk report" in text
+    last = book.cells[-1].outputs[0].data["text/html"]
+    assert all(escape(caution) in last for caution in CAUTIONS)
     assert StudyFile.load(desk / "out" / "study.toml").settings.ceiling == 0.7
     audit = verify(desk / "out")
     assert audit.ok, str(audit)

@@ -153,7 +153,9 @@ class _Check:
         stored = self.manifest["data"]
         for name, kept in stored["files"].items():
             found = file_fingerprint((self.folder / name).resolve())
-            if found != kept:
+            if kept is None:
+                self.unchecked.append(f"the file {name} was not there when the pack was written")
+            elif found != kept:
                 self.differ(f"Data file {name}", f"its fingerprint is {found[:12]}, the pack's {kept[:12]}")
         found = self.study.panel.fingerprint
         if found != stored["fingerprint"]:

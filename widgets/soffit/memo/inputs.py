@@ -67,7 +67,11 @@ class Inputs:
 
     @classmethod
     def of(cls, study: Study) -> Inputs | None:
-        """The files that a study was opened from; None where its data or an option came from memory."""
+        """The files that a study was opened from.
+
+        None where its data or an option came from memory, or where an address holds a password: the memo is written
+        all the same, without a way to read the data again.
+        """
         came = study.opened_from
         if not came:
             return None
@@ -77,6 +81,8 @@ class Inputs:
             if name not in ("progress", "limits")
         }
         if not all(name in _OPTIONS and _plain(value) for name, value in options.items()):
+            return None
+        if any(_PASSWORD.search(place) for place in (came["returns"], came["factors"])):
             return None
         return cls(came["returns"], came["factors"], options)
 

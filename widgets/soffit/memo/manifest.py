@@ -63,8 +63,10 @@ def make_manifest(
         "data": {
             "fingerprint": pack.study.panel.fingerprint,
             "inputs": inputs.to_dict() if inputs else None,
+            # A file may be gone by now; the memo is written all the same, and the audit says so.
             "files": {
-                name: file_fingerprint(path) for name, path in (inputs.files() if inputs else {}).items()
+                name: file_fingerprint(path) if path.is_file() else None
+                for name, path in (inputs.files() if inputs else {}).items()
             },
         },
         "seed": settings.seed,

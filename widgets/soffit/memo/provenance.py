@@ -62,7 +62,10 @@ def provenance_page(study: Study, inputs: Inputs | None) -> ProvenancePage:
     dates = panel.dates
     rows = [
         ("Data fingerprint (SHA-256)", panel.fingerprint),
-        ("Data from", ", ".join(inputs.names) if inputs else "tables in memory; no files to read again"),
+        (
+            "Data from",
+            ", ".join(inputs.names) if inputs else "not recorded; there are no files to read again",
+        ),
         (
             "Panel",
             f"{show(dates[0], NumberForm.DATE)} to {show(dates[-1], NumberForm.DATE)}, {len(dates):,} "

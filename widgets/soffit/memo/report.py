@@ -6,7 +6,7 @@ import base64
 import hashlib
 import json
 import traceback
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import replace
 from html import escape
 from pathlib import Path
@@ -20,6 +20,7 @@ from soffit.memo.provenance import versions
 from soffit.memo.study_file import Part, StudyFile
 from soffit.memo.text import plain
 from soffit.memo.writing import write
+from soffit.present.cautions import cautions_for
 from soffit.present.draw_mpl import png_bytes
 from soffit.present.exhibits import build
 from soffit.present.plain import cells
@@ -138,8 +139,10 @@ class Report:
         said = [f"Written: {name}" for name in files] + [
             f"Not delivered: {key}. {why}" for key, why in failures.items()
         ]
-        items = "".join(f"<li>{_safe(text)}</li>" for text in said)
-        return Shown(f"<ul>{items}</ul>", "\n".join(said))
+        # The notebook is handed on as well: it must not go without what the memo says.
+        cautions = cautions_for(kept.exhibit for kept in self.pack.exhibits)
+        html = f"<h2>Cautions</h2>{_list(cautions)}<h2>Files</h2>{_list(said)}"
+        return Shown(html, "\n".join(["Cautions", *cautions, "Files", *said]))
 
     def _made(self, part: Part, study: Study) -> Exhibit:
         """The exhibit, from the cache where the same data, settings and versions made it before."""
@@ -181,6 +184,10 @@ def _hash(values: Any) -> str:
     return hashlib.sha256(text.encode("utf-8")).hexdigest()
 
 
+def _list(texts: Iterable[str]) -> str:
+    return "<ul>" + "".join(f"<li>{_safe(text)}</li>" for text in texts) + "</ul>"
+
+
 def _safe(text: str) -> str:
     return escape(plain(text))
 
@@ -190,6 +197,7 @@ def _shown(exhibit: Exhibit) -> Shown:
         f"<h2>{_safe(exhibit.title)}</h2>",
         f"<p>{_safe(exhibit.finding.text)}</p>",
         *(f"<p>Note: {_safe(note)}</p>" for note in exhibit.notes),
+        *(f"<p>Caution: {_safe(caution)}</p>" for caution in exhibit.cautions),
     ]
     for figure in exhibit.figures:
         picture = base64.b64encode(png_bytes(figure)).decode("ascii")
