@@ -14,7 +14,7 @@ from soffit.intake.options import Excess, Role, choice
 from soffit.intake.record import EntryKind, RecordBuilder, Severity, listed
 from soffit.intake.sources import RawTable
 
-__all__ = ["read_mapping", "settle_roles"]
+__all__ = ["read_mapping", "settle_roles", "with_roles"]
 
 _RISK_FREE = (
     "rf",
@@ -85,6 +85,23 @@ def read_mapping(
                 remedy=nearest(section, _SECTIONS),
             )
     return content.get("roles", {}), content.get("labels")
+
+
+def with_roles(given: Mapping[str, Any], changes: Mapping[str, Role]) -> dict[str, Role]:
+    """Declared roles with some changed, as one role a name.
+
+    Raises
+    ------
+    SettingError
+        For an unknown role.
+    """
+    flat: dict[str, Role] = {}
+    for key, value in given.items():
+        if isinstance(value, (list, tuple)):
+            flat.update({str(name): choice(Role, key, "role") for name in value})
+        else:
+            flat[str(key)] = choice(Role, value, f"roles[{key!r}]")
+    return {**flat, **changes}
 
 
 def _declared(roles: Mapping[str, Any], columns: Sequence[str]) -> dict[str, Role]:

@@ -11,7 +11,8 @@ from typing import Any, ClassVar
 import ipywidgets
 
 from soffit.engine import Steps, beside
-from soffit.errors import SettingError, nearest
+from soffit.errors import SettingError, SoffitError, nearest
+from soffit.intake import Role
 from soffit.panels.ceiling_panel import CeilingPanel
 from soffit.panels.panel_base import Panel
 from soffit.panels.table_view import TableView
@@ -268,6 +269,56 @@ class IntakePanel(ExhibitPanel):
 
     key = "intake"
     controls = ("start", "end", "histories")
+
+    def _build(self) -> None:
+        guard = self.session.guard
+        self._series = ipywidgets.Dropdown(description="Series", style={"description_width": "initial"})
+        self._role = ipywidgets.Dropdown(
+            description="is read as",
+            options=[(str(role), role) for role in Role],
+            style={"description_width": "initial"},
+        )
+        self._read_again = ipywidgets.Button(
+            description="Read again", tooltip="Read the sources again with this role; every panel follows"
+        )
+        self._series.observe(guard(self._on_series), "value")
+        self._read_again.on_click(guard(self._on_read_again))
+        row = ipywidgets.Box([self._series, self._role, self._read_again])
+        row.add_class("soffit-controls")
+        self._roles: dict[str, Role] = {}
+        super()._build()
+        *rest, notes = self.widget.children
+        self.widget.children = (*rest, row, notes)
+
+    def _draw(self, answer: _Answer) -> None:
+        super()._draw(answer)
+        found = self.session.study.record.coverage["role"]
+        # A series that was ignored is in no table any more, but can be taken in again.
+        self._roles = {name: role for name, role in self._roles.items() if role is Role.IGNORED} | {
+            str(name): Role(str(role)) for name, role in found.items()
+        }
+        names = tuple(self._roles)
+        if tuple(self._series.options) != names:
+            self._series.options = names
+        self._on_series()
+
+    def _on_series(self, _: Any = None) -> None:
+        if self._series.value in self._roles:
+            self._role.value = self._roles[self._series.value]
+
+    def _on_read_again(self, _: Any = None) -> None:
+        name, role = self._series.value, self._role.value
+        before = dict(self._roles)
+        try:
+            study = self.session.study.with_roles({name: role})
+        except SoffitError as error:
+            self.session.refuse(str(error))
+            self._on_series()
+            return
+        self._roles[name] = role
+        if not self.session.reopen(study):
+            self._roles = before
+            self._on_series()
 
 
 class SharpePanel(ExhibitPanel):

@@ -60,6 +60,8 @@ class Session(HasTraits):
 
     def __init__(self, study: Study) -> None:
         super().__init__(settings=study.settings)
+        # The study that panels were opened on: it names the session as long as that lives.
+        self._first = study
         self._opened = study
         self._study = study
         self._followers: list[Follower] = []
@@ -126,6 +128,35 @@ class Session(HasTraits):
         if settings != self.settings:
             self.settings = settings
         return self._settle() if settle else True
+
+    def reopen(self, study: Study) -> bool:
+        """Show a study of the same data read otherwise in every panel, or say why not.
+
+        Parameters
+        ----------
+        study : Study
+            The data read again, under the settings of the present study.
+
+        Returns
+        -------
+        bool
+            Whether every panel could show it.
+        """
+        before = self._opened, self._study
+        self._opened, self._study = study, study
+        try:
+            computed = [(follower, follower.compute(study)) for follower in self._followers]
+        except SoffitError as error:
+            self._opened, self._study = before
+            self.refuse(str(error))
+            return False
+        self.problem = ""
+        self.settings = study.settings
+        self._reread()
+        for follower, result in computed:
+            follower.show(result)
+        self.results += 1
+        return True
 
     def refuse(self, reason: str) -> None:
         """Say why a change was not taken, and put the controls back to what holds."""
@@ -200,4 +231,4 @@ class Session(HasTraits):
         for control in self._controls.values():
             control.close()
         self._controls.clear()
-        self._open.pop(id(self._opened), None)
+        self._open.pop(id(self._first), None)

@@ -9,8 +9,11 @@ from typing import TYPE_CHECKING, Any, Concatenate, ParamSpec, Self, TypeVar, ca
 
 import pandas as pd
 
+from soffit.errors import InputError
 from soffit.estimate.steps import Steps
-from soffit.intake import Panel, Source, open_panel
+from soffit.intake import Panel, Role, Source, open_panel
+from soffit.intake.options import choice
+from soffit.intake.roles import read_mapping, with_roles
 from soffit.settings import Settings
 
 if TYPE_CHECKING:
@@ -124,6 +127,7 @@ class StudyBase:
         self.settings = settings or Settings()
         self.kept: list[Any] = []
         self.opened_from: Mapping[str, Any] = {}
+        self._given: tuple[Any, Any, dict[str, Any]] | None = None
         self._results: dict[Hashable, Any] = {}
 
     @classmethod
@@ -156,6 +160,7 @@ class StudyBase:
         if isinstance(settings, str | Path):
             settings = Settings.load(settings)
         study = cls(open_panel(returns, factors, **options), settings)
+        study._given = returns, factors, options
         if all(isinstance(source, str | Path) for source in (returns, "" if factors is None else factors)):
             study.opened_from = {
                 "returns": str(returns),
@@ -185,7 +190,38 @@ class StudyBase:
             return self
         other = type(self)(self.panel, settings)
         other.kept, other._results, other.opened_from = self.kept, self._results, self.opened_from
+        other._given = self._given
         return other
+
+    def with_roles(self, roles: Mapping[str, Role | str]) -> Self:
+        """Read the same sources again with some roles changed; settings and what was kept stay.
+
+        Parameters
+        ----------
+        roles : mapping of str to Role
+            Roles of the series that change: asset, traded factor, non-traded factor, risk-free or ignored.
+
+        Raises
+        ------
+        SettingError
+            For an unknown role.
+        InputError
+            If the data cannot be used so, or this study was not opened from sources.
+        """
+        if self._given is None:
+            raise InputError(
+                "This study was made from a panel, not from sources",
+                remedy="open the sources with Study.open, with roles",
+            )
+        returns, factors, options = self._given
+        stated, labels = read_mapping(options.get("roles"))
+        changes = {name: choice(Role, role, f"roles[{name!r}]") for name, role in roles.items()}
+        again = {**options, "roles": with_roles(stated, changes)}
+        if labels is not None:
+            again["labels"] = labels
+        study = type(self).open(returns, factors, settings=self.settings, **again)
+        study.kept = self.kept
+        return study
 
     def __repr__(self) -> str:
         shape = f"{self.panel.assets.shape[1]} assets, {self.panel.factors.shape[1]} factors"
