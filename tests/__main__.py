@@ -30,7 +30,10 @@ def main(asked: list[str]) -> int:
         print(f"== {name}", flush=True)
         start = time.monotonic()
         code = subprocess.run(STEPS[name], cwd=ROOT, check=False).returncode
-        print(f"== {name}: {'ok' if code == 0 else f'failed ({code})'}, {time.monotonic() - start:.0f} s", flush=True)
+        print(
+            f"== {name}: {'ok' if code == 0 else f'failed ({code})'}, {time.monotonic() - start:.0f} s",
+            flush=True,
+        )
         worst = max(worst, abs(code))
     return worst
 

@@ -93,7 +93,7 @@ def alphas_figure(study: Study, regression: FactorRegression) -> FigureSpec:
             f"Alphas of {plural(len(shown), 'asset')} with {level} intervals; "
             f"{int(apart.sum())} intervals do not contain zero."
         ),
-        footnote=f"{sample_line(study)}.{cut}",
+        footnote=f"{sample_line(study)}. Diamonds: the interval does not hold zero.{cut}",
         aspect=1.2,
     )
 
