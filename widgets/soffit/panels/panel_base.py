@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import asyncio
+from abc import ABC, abstractmethod
 from collections.abc import Sequence
 from html import escape
 from pathlib import Path
@@ -41,7 +42,7 @@ class FindingLine(anywidget.AnyWidget):
     alts = Dict(help="Text alternative of each figure, by its CSS class.").tag(sync=True)
 
 
-class Panel:
+class Panel(ABC):
     """Base of the panels.
 
     A subclass names its controls and computes its exhibit; all the rest is here. Display it as the last line of a
@@ -83,17 +84,17 @@ class Panel:
 
     # What a subclass says
 
+    @abstractmethod
     def exhibit(self) -> Exhibit:
         """What the panel shows now, in full, as a memo takes it."""
-        raise NotImplementedError
 
+    @abstractmethod
     def compute(self, study: Study) -> Any:
         """Compute what :meth:`show` draws."""
-        raise NotImplementedError
 
+    @abstractmethod
     def show(self, computed: Any) -> None:
         """Draw what :meth:`compute` gave."""
-        raise NotImplementedError
 
     # Parts
 
@@ -179,7 +180,7 @@ class Panel:
         if tuple(self._place.children) != (figure.widget,):
             self._place.children = (figure.widget,)
 
-    def _figure_made(self, figure: DrawnFigure) -> None:
+    def _figure_made(self, figure: DrawnFigure) -> None:  # noqa: B027  a subclass may do nothing here
         """A view was opened for the first time."""
 
     @staticmethod
