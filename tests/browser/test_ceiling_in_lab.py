@@ -195,6 +195,21 @@ def test_the_finding_can_be_copied(sheet: Sheet) -> None:
     assert copied == sheet.find(FINDING).inner_text()
 
 
+def test_a_reloaded_page_stands_where_it_stood_and_plays_on(own: Sheet) -> None:
+    own.drag(own.find(SLIDER).first, 1 / 3, 0.6)
+    own.rest()
+    finding, shown = own.find(FINDING).inner_text(), own.find(ENTRY).first.input_value()
+    own.save()
+    own.page.reload()
+    own.page.wait_for_selector(".soffit-moving path[d]", state="attached")
+    until(lambda: own.find(FINDING).inner_text() == finding)
+    assert own.find(ENTRY).first.input_value() == shown
+    own.drag(own.find(SLIDER).first, 0.6, 0.2)
+    own.rest()
+    ceiling = float(own.find(ENTRY).first.input_value())
+    assert (statuses(own), own.find(FINDING).inner_text()) == expected(own, ceiling)
+
+
 def test_running_the_cell_again_frees_what_it_showed_before(own: Sheet) -> None:
     sheet = own
     count = "from ipywidgets.widgets.widget import _instances; print(len(_instances))"

@@ -96,7 +96,7 @@ class PaintedFigure {
     return groups[place.points].querySelectorAll(":scope > .object_grp > path.dot").length === place.count;
   }
   get current() {
-    return this.layer.isConnected && (this.nodes.length === 0 || this.nodes[0].isConnected);
+    return this.figure.contains(this.layer) && (this.nodes.length === 0 || this.figure.contains(this.nodes[0]));
   }
   fit() {
     const [left, top] = /translate\(([-\d.e]+)[ ,]+([-\d.e]+)\)/.exec(this.plot.getAttribute("transform")).slice(1);
@@ -168,7 +168,7 @@ async function render({ model, el }) {
     const ceiling = slider.get("value");
     if (root === null || ceiling === null) return;
     for (const [element, figure] of painted)
-      if (!element.isConnected) {
+      if (!root.contains(element)) {
         figure.close();
         painted.delete(element);
       }

@@ -98,7 +98,8 @@ function render({ model, el }) {
       commit();
     }
   });
-  // JupyterLab's own shortcuts and its drag of cells must not take these keys and gestures.
+  // The front end's own shortcuts and its drag of cells must not take these keys and gestures.
+  for (const input of [range, entry]) input.dataset.lmSuppressShortcuts = "true";
   for (const kind of ["keydown", "mousedown"]) el.addEventListener(kind, (event) => event.stopPropagation());
 
   model.on("change:value", show);
