@@ -175,7 +175,7 @@ JointPanel.steps = slow
     desk.python("desk.session.propose({'seed': 7})")
     cancel = desk.find(".soffit-desk .soffit-work button")
     cancel.wait_for()
-    assert "Resting" in desk.find(".soffit-desk .soffit-work").inner_text()
+    until(lambda: "Resting" in desk.find(".soffit-desk .soffit-work").inner_text())
     # The kernel answers meanwhile.
     assert desk.python("print(desk.panel._work.running)").strip() == "True"
     cancel.click()
