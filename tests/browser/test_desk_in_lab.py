@@ -179,7 +179,7 @@ JointPanel.steps = slow
     # The kernel answers meanwhile.
     assert desk.python("print(desk.panel._work.running)").strip() == "True"
     cancel.click()
-    until(lambda: "Cancelled" in desk.find(".soffit-desk .soffit-work").inner_text(), 2.0)
+    until(lambda: "Cancelled" in desk.find(".soffit-desk .soffit-work").inner_text())
     assert desk.find(FINDING).inner_text() == before
     assert desk.find(".soffit-stale").count() == 1
     desk.python("JointPanel.steps = plain")

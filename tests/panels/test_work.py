@@ -106,7 +106,9 @@ def test_what_is_quick_is_there_at_once_and_the_rest_is_left() -> None:
     asyncio.run(scene())
 
 
-def test_work_shows_how_far_it_is_and_delivers(work: Work) -> None:
+def test_work_shows_how_far_it_is_and_delivers(work: Work, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("soffit.panels.work._TELL", 0.0)  # a word at every step
+
     async def scene() -> None:
         got: list[int] = []
         work.begin(counting(20, []), got.append)
@@ -120,6 +122,20 @@ def test_work_shows_how_far_it_is_and_delivers(work: Work) -> None:
         assert work.widget.layout.display == "none"
         assert len(seen) > 5
         assert max(seen) == (19, 20)
+
+    asyncio.run(scene())
+
+
+def test_words_on_how_far_it_is_do_not_flood_the_browser(work: Work) -> None:
+    async def scene() -> None:
+        got: list[int] = []
+        told: list[object] = []
+        work.label.observe(told.append, "value")
+        work.begin(counting(12, []), got.append)
+        while work.running:
+            await asyncio.sleep(0)
+        assert got == [12]
+        assert 1 <= len(told) < 12
 
     asyncio.run(scene())
 

@@ -18,6 +18,8 @@ __all__ = ["Unfinished", "Work", "try_now"]
 _PATIENCE = 0.2
 # Seconds given to the browser's messages between two steps.
 _PAUSE = 0.005
+# Seconds between two words on how far it is.
+_TELL = 0.1
 
 
 class Unfinished:
@@ -139,6 +141,7 @@ class Work:
         self._on_stop()
 
     async def _walk(self, steps: Steps[Any], on_done: Callable[[Any], None]) -> None:
+        told = -_TELL
         try:
             while self._steps is steps:
                 try:
@@ -146,7 +149,10 @@ class Work:
                 except StopIteration as end:
                     self._finish(end.value, on_done)
                     return
-                self._tell(progress)
+                # A message a step would keep the browser too busy to send the click on Cancel.
+                if monotonic() - told >= _TELL:
+                    told = monotonic()
+                    self._tell(progress)
                 await asyncio.sleep(_PAUSE)
         except asyncio.CancelledError:
             raise
