@@ -22,7 +22,7 @@ from soffit.panels.still import LIVE, still_html
 from soffit.panels.styles import glyph, stylesheet
 from soffit.present.draw_bqplot import DrawnFigure
 from soffit.present.freeing import free
-from soffit.present.spec import Bars, Exhibit, FigureSpec, Points, Role, Segments
+from soffit.present.spec import Exhibit, FigureSpec, Points, Role, Segments
 from soffit.present.theme import look
 from soffit.study import Study
 
@@ -192,7 +192,7 @@ class Panel(ABC):
         """Legend of what is not labelled in the figure itself."""
         entries: dict[str, str] = {}
         for mark in spec.marks:
-            if isinstance(mark, Points | Bars | Segments):
+            if isinstance(mark, Points | Segments):  # bars are named by their axis
                 roles = sorted(set(mark.roles), key=list(Role).index)
                 for role in roles:
                     text = mark.label if len(roles) == 1 else look(role).word or mark.label
