@@ -87,7 +87,8 @@ class Work:
         self.label = ipywidgets.HTML()
         self.button = ipywidgets.Button(description="Cancel", layout={"width": "auto"})
         self.button.on_click(session.guard(self._pressed))
-        self.widget = ipywidgets.Box([self.bar, self.label, self.button], layout={"display": "none"})
+        # The button stands first: words that grow beside it must not move it from under the pointer.
+        self.widget = ipywidgets.Box([self.button, self.bar, self.label], layout={"display": "none"})
         self.widget.add_class("soffit-work")
 
     @property
